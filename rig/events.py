@@ -1,0 +1,55 @@
+"""Events of a run: what happened at which board tick. They are journalled and sealed with the rows.
+
+kind            data
+--------------  -------------------------------------------------------------------------------
+run             rig, protocol, pace
+armed           by
+drive           target_v, slew_v_per_s
+level           level, direction ("rising"|"falling"), drive_v, role ("level"|"reference"|"step"), planned_taps
+settled         level, settled (bool), waited_s
+quiet           level                      the undisturbed record begins (drive locked)
+quiet_end       level, writes
+tap             tap, level, impulse_n_m_s, by
+tap_end         tap, level, writes         the observation ends; writes to the locked drive register
+tap_excluded    tap, reason
+observe         level                      locked record without a tap begins
+observe_end     level, writes
+level_end       level
+release         level, angle_rad           like a tap: ends with release_end
+release_end     level, writes
+mark            text
+sync            -
+zero            body_rad, load_n           means with the drive off
+prompt          text
+acknowledged    text, waited_s
+trip            cause, sentence, value, limit, halt
+halt            how, cause
+turning         -                          drive is off, the crank still turns
+standstill      coast_s
+loss            rows, frames, overruns
+notice          anything the board told
+finished        exit_code, reason
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+
+@dataclass(frozen=True)
+class Event:
+    """Something that happened at `tick` (board ticks, unwrapped)."""
+
+    tick: int
+    kind: str
+    data: dict[str, Any] = field(default_factory=dict)
+
+    def to_json(self) -> dict[str, Any]:
+        return {"tick": self.tick, "kind": self.kind, **self.data}
+
+    @classmethod
+    def from_json(cls, fields: dict[str, Any]) -> Event:
+        """Inverse of `to_json`; KeyError when tick or kind is missing."""
+        rest = {key: value for key, value in fields.items() if key not in ("tick", "kind")}
+        return cls(int(fields["tick"]), str(fields["kind"]), rest)
