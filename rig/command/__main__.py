@@ -1,0 +1,3 @@
+from rig.command import entry
+
+entry()

@@ -1,0 +1,81 @@
+"""The command line of `haltere`: which commands there are and which words they take.
+
+Nothing heavy is imported here, so that `haltere --help` and a mistyped command answer at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+from importlib.metadata import version
+from typing import NoReturn
+
+from rig.command.exits import CommandError
+
+COMMANDS = {
+    "demo": "run the main job on the simulated boom: staircase up and down with taps, map and report",
+    "run": "carry out a protocol on a rig and analyse it while it runs",
+    "check": "read a rig file, and a protocol, and tell every mistake; dry run before power",
+    "analyse": "estimate everything again from the raw rows of a session",
+    "report": "write the report of a session",
+    "recover": "seal the journal of a run that was cut off",
+    "about": "tell versions, serial ports and whether the installation is sound",
+}
+
+
+class Parser(argparse.ArgumentParser):
+    """Bad usage ends in one sentence instead of a usage dump."""
+
+    def error(self, message: str) -> NoReturn:
+        raise CommandError(f"{message} (try '{self.prog} --help')")
+
+
+def build() -> argparse.ArgumentParser:
+    """The parser for all commands; its result has `.command` and the command's own words."""
+    parser = Parser(
+        prog="haltere",
+        description="Find the drive at which a flapping mechanism holds itself by vibration alone.",
+        epilog="The software halt is not a safety-rated stop. Exit codes: 0 done; 2 bad usage or file; "
+        "3 halted by an interlock or the operator; 4 link or hardware; 5 damaged data.",
+    )
+    parser.add_argument("--version", action="version", version=f"haltere {version('haltere')}")
+    commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND", parser_class=Parser)
+    made = {name: commands.add_parser(name, help=text, description=text) for name, text in COMMANDS.items()}
+
+    demo = made["demo"]
+    demo.add_argument("--out", metavar="DIR", default="haltere-demo", help="folder for the results")
+    demo.add_argument("--seed", type=int, help="seed of the simulated disturbances (default: the rig file's)")
+    demo.add_argument("--quiet", action="store_true", help="no progress on stderr")
+
+    run = made["run"]
+    run.add_argument("protocol", metavar="PROTOCOL", help="a protocol file, or the name of a shipped one")
+    run.add_argument("--rig", required=True, metavar="RIG", help="a rig file, or the name of a shipped one")
+    run.add_argument("--out", metavar="FILE", help="session file (default: RIG-PROTOCOL.h5)")
+    run.add_argument("--pace", choices=("fast", "real"), default="fast", help="for simulated rigs")
+    run.add_argument("--seed", type=int, help="seed of the simulated disturbances")
+    run.add_argument("--acknowledge", metavar="NAME", help="the cautions were read and understood by NAME")
+    run.add_argument("--report", metavar="HTML", help="write the report there as well")
+    run.add_argument("--keep-journal", action="store_true", help="keep the journal beside the session")
+    run.add_argument("--quiet", action="store_true", help="no progress on stderr")
+
+    check = made["check"]
+    check.add_argument("rig", metavar="RIG")
+    check.add_argument("protocol", metavar="PROTOCOL", nargs="?")
+
+    analyse = made["analyse"]
+    analyse.add_argument("sessions", metavar="SESSION", nargs="+")
+    analyse.add_argument("--json", action="store_true", help="results as JSON on stdout")
+    analyse.add_argument("--rig", metavar="RIG", help="constants from this rig file instead of the session's")
+    analyse.add_argument(
+        "--control", metavar="SESSION", help="session of the clamped control, for the vibration verdict"
+    )
+
+    report = made["report"]
+    report.add_argument("session", metavar="SESSION")
+    report.add_argument("--out", metavar="HTML", help="default: beside the session")
+
+    recover = made["recover"]
+    recover.add_argument("journal", metavar="JOURNAL")
+    recover.add_argument("--out", metavar="FILE", help="session file (default: beside the journal)")
+
+    made["about"].add_argument("--json", action="store_true", help="as JSON on stdout")
+    return parser
