@@ -28,32 +28,35 @@ class TurnMean:
 
 def turn_means(time_s: ArrayLike, signal: ArrayLike, crank_rad: ArrayLike) -> tuple[FloatArray, FloatArray]:
     """Mean of a signal over each whole crank turn: (middle of the turn in s, mean), shape (turns,)."""
+    marks, areas = _turn_areas(time_s, signal, crank_rad)
+    return 0.5 * (marks[1:] + marks[:-1]), areas / np.diff(marks)
+
+
+def mean_over_turns(time_s: ArrayLike, signal: ArrayLike, crank_rad: ArrayLike) -> TurnMean:
+    """Mean of a signal over all whole turns; std from the turn-by-turn means and their correlation."""
+    marks, areas = _turn_areas(time_s, signal, crank_rad)
+    if len(areas) < 2:
+        return TurnMean(
+            float(np.mean(np.asarray(signal, dtype=float))), float("nan"), len(areas), "too_short"
+        )
+    value = float(np.sum(areas)) / float(marks[-1] - marks[0])
+    return TurnMean(value, float(np.sqrt(mean_variance(areas / np.diff(marks)))), len(areas))
+
+
+def _turn_areas(time_s: ArrayLike, signal: ArrayLike, crank_rad: ArrayLike) -> tuple[FloatArray, FloatArray]:
     time, values = np.asarray(time_s, dtype=float), np.asarray(signal, dtype=float)
     if time.shape != values.shape:
         raise ValueError("time and signal must be of equal length")
     marks = turn_times(time, crank_rad)
     if len(marks) < 2:
-        return np.zeros(0), np.zeros(0)
+        return marks, np.zeros(0)
     cumulative = np.concatenate(([0.0], np.cumsum(0.5 * (values[1:] + values[:-1]) * np.diff(time))))
     # Inside a sample interval the integral of a straight line is a parabola; a linear one would leave
     # (slope x step^2)/8 behind, which the large flap ripple makes visible.
     index = np.clip(np.searchsorted(time, marks, side="right") - 1, 0, len(time) - 2)
     into = marks - time[index]
     slope = (values[index + 1] - values[index]) / (time[index + 1] - time[index])
-    at_marks = cumulative[index] + values[index] * into + 0.5 * slope * into**2
-    return 0.5 * (marks[1:] + marks[:-1]), np.diff(at_marks) / np.diff(marks)
-
-
-def mean_over_turns(time_s: ArrayLike, signal: ArrayLike, crank_rad: ArrayLike) -> TurnMean:
-    """Mean of a signal over all whole turns; std from the turn-by-turn means and their correlation."""
-    time, values = np.asarray(time_s, dtype=float), np.asarray(signal, dtype=float)
-    middle, means = turn_means(time, values, crank_rad)
-    if len(means) < 2:
-        return TurnMean(float(values.mean()), float("nan"), len(means), "too_short")
-    # Turns of unequal length: weights by length are the exact time mean, and equal within the wander.
-    lengths = np.gradient(middle)
-    value = float(np.sum(means * lengths) / np.sum(lengths))
-    return TurnMean(value, float(np.sqrt(mean_variance(means))), len(means))
+    return marks, np.diff(cumulative[index] + values[index] * into + 0.5 * slope * into**2)
 
 
 def mean_position(time_s: ArrayLike, angle_rad: ArrayLike, crank_rad: ArrayLike | None = None) -> TurnMean:

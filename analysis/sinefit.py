@@ -112,7 +112,9 @@ def crank_from_signal(
     if line.status != "ok":
         return None
     carrier = 2.0 * np.pi * line.frequency_hz * (time - time[0])
-    base = _smoothed(time, (values - smooth) * np.exp(-1j * carrier), min(bandwidth_hz, 0.3 * line.frequency_hz))
+    base = _smoothed(
+        time, (values - smooth) * np.exp(-1j * carrier), min(bandwidth_hz, 0.3 * line.frequency_hz)
+    )
     return np.asarray(carrier + np.unwrap(np.angle(base)))
 
 
