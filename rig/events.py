@@ -5,7 +5,7 @@ kind            data
 run             rig, protocol, pace
 armed           by
 drive           target_v, slew_v_per_s
-level           level, direction ("rising"|"falling"), drive_v, role ("level"|"reference"|"step"), planned_taps
+level           level, direction ("rising"|"falling"), drive_v, role ("level"|"reference"|"step")
 settled         level, settled (bool), waited_s
 quiet           level                      the undisturbed record begins (drive locked)
 quiet_end       level, writes
