@@ -132,7 +132,7 @@ class FrameSequence:
             sequence = self._sequence + ahead
             lost_frames = ahead - 1
             lost_rows = (frame.first_row - self._next_row) & 0xFFFFFFFF
-        ticks = np.uint64(tick) + np.arange(rows, dtype=np.uint64) * np.uint64(frame.period)
+        ticks = np.arange(tick, tick + rows * frame.period, frame.period, dtype=np.uint64)
         self._tick = tick + (rows - 1) * frame.period
         self._sequence = sequence
         self._next_row = (frame.first_row + rows) & 0xFFFFFFFF

@@ -69,6 +69,8 @@ class Board:
         self._tap_until = 0
         self._driven_row: int | None = None
         self._still_rows = facts.rows(TURN_PART / facts.standstill_hz)
+        self._patience_rows = facts.rows(facts.heartbeat_timeout_s)
+        self._stall_rows = facts.rows(facts.stall_s)
         plant.motor(COASTING)
 
     # What the board knows of itself
@@ -109,7 +111,7 @@ class Board:
 
     def heartbeat(self) -> None:
         if self.enabled:
-            self._watchdog_row = self.row + self.facts.rows(self.facts.heartbeat_timeout_s)
+            self._watchdog_row = self.row + self._patience_rows
 
     def enable(self) -> None:
         if self.latch is not None:
@@ -223,7 +225,7 @@ class Board:
             return
         if self._driven_row is None:
             self._driven_row = self.row
-        if self.row - max(self.moved_row, self._driven_row) >= self.facts.rows(self.facts.stall_s):
+        if self.row - self.moved_row >= self._stall_rows <= self.row - self._driven_row:
             self._cut("stall")
 
     def contacts_changed(self) -> None:
