@@ -1,0 +1,56 @@
+"""Smooth curves that go into the stability map beside the measured levels."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rig.results import LevelResult, SessionResult
+
+Values = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class MapCurve:
+    """A curve over flap rate (Hz): slow stiffness 1/s^2, and, where known, decay rate 1/s and mean angle deg.
+
+    All arrays have the shape of `flap_hz`; `label` stands in the legend.
+    """
+
+    label: str
+    flap_hz: Values
+    stiffness_per_s2: Values
+    decay_per_s: Values | None = None
+    mean_angle_deg: Values | None = None
+
+
+def straight_fit(result: SessionResult) -> MapCurve | None:
+    """The straight line of slow stiffness on flap rate squared that the vibration verdict rests on.
+
+    None where the verdict gives no slope. Without an intercept among its numbers the line is laid through
+    the weighted centroid of the held levels, where every least-squares line passes.
+    """
+    slope = result.vibration.numbers.get("slope")
+    if slope is None or slope.value is None:
+        return None
+    levels = [level for level in result.levels if level.state == "held" and has_stiffness(level)]
+    if not levels:
+        return None
+    squares = np.array([float(level.flap_hz.value or 0.0) ** 2 for level in levels])
+    intercept = result.vibration.numbers.get("intercept")
+    if intercept is not None and intercept.value is not None:
+        start = intercept.value
+    else:
+        stds = np.array([level.stiffness_per_s2.std or np.nan for level in levels])
+        weights = np.where(np.isfinite(stds) & (stds > 0.0), 1.0 / stds**2, 0.0)
+        weights = weights if weights.any() else np.ones(len(levels))
+        kappa = np.array([float(level.stiffness_per_s2.value or 0.0) for level in levels])
+        start = float(np.average(kappa - slope.value * squares, weights=weights))
+    flap = np.sqrt(np.linspace(squares.min(), squares.max(), 40))
+    return MapCurve("straight line through the levels", flap, start + slope.value * flap**2)
+
+
+def has_stiffness(level: LevelResult) -> bool:
+    return level.stiffness_per_s2.value is not None and level.flap_hz.value is not None
