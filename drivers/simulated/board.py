@@ -68,7 +68,7 @@ class Board:
         self._free_row = NEVER
         self._tap_until = 0
         self._driven_row: int | None = None
-        self._still_rows = facts.rows(TURN_PART / facts.standstill_hz)
+        self._still_rows = facts.rows(4.0 * TURN_PART / facts.standstill_hz)
         self._patience_rows = facts.rows(facts.heartbeat_timeout_s)
         self._stall_rows = facts.rows(facts.stall_s)
         plant.motor(COASTING)

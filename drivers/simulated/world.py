@@ -53,8 +53,8 @@ class SensorFacts:
 class BoardFacts:
     """How the board samples and protects; its own trips need no host.
 
-    The board takes the crank as turning while it has gone a twentieth of a turn within the time that
-    takes at `standstill_hz`.
+    The board takes the crank as turning until it has not gone a twentieth of a turn for as long as that
+    takes at a quarter of `standstill_hz`: a crank that hangs at its top for a moment is not at rest.
     """
 
     row_hz: float = 1000.0
