@@ -1,0 +1,229 @@
+"""Open a session file: streams as arrays with units, events, rig, protocol and results.
+
+    with open_session("session.h5") as session:
+        board = session.streams["board"]
+        board.time_s, board["body"], board.unit("body"), board.raw("body")
+
+Only `rig.session` and `rig.record` know HDF5.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from types import TracebackType
+from typing import TYPE_CHECKING, Any
+
+import h5py
+import numpy as np
+from numpy.typing import NDArray
+
+from drivers.channels import Channel, ChannelTable
+from drivers.rows import RowBlock
+from rig.events import Event
+from rig.record.errors import Damaged
+
+if TYPE_CHECKING:
+    from rig.description import RigDescription
+    from rig.steps import Protocol
+
+#: A compressed stream is never larger than this many times its file.
+MOST_EXPANSION = 2000
+
+
+class Stream:
+    """The rows of one sampler. Columns are read when asked for and kept."""
+
+    def __init__(self, group: h5py.Group, path: Path) -> None:
+        self._group = group
+        self._cache: dict[str, NDArray[Any]] = {}
+        self.tick_hz = int(group.attrs["tick_hz"])
+        self.row_period_ticks = int(group.attrs["row_period_ticks"])
+        self.frame_rows = int(group.attrs["frame_rows"])
+        named = [(int(data.attrs["column"]), name) for name, data in group.items() if "column" in data.attrs]
+        names = [name for _, name in sorted(named)]
+        self.channels = ChannelTable(tuple(_channel(name, group[name]) for name in names))
+        length = len(group["tick"])
+        for name in ("time_s", "status", *names):
+            if len(group[name]) != length:
+                raise Damaged(f"{path}: stream {group.name} has columns of different length ({name})")
+
+    def __len__(self) -> int:
+        return len(self._group["tick"])
+
+    @property
+    def tick(self) -> NDArray[np.uint64]:
+        """Board ticks, unwrapped, uint64, shape (n,)."""
+        return self._read("tick")
+
+    @property
+    def time_s(self) -> NDArray[np.float64]:
+        """Board time since the first row, s, shape (n,)."""
+        return self._read("time_s")
+
+    @property
+    def status(self) -> NDArray[np.uint16]:
+        """`drivers.rows.Status` bits, shape (n,)."""
+        return self._read("status")
+
+    def raw(self, name: str) -> NDArray[np.int32]:
+        """Raw integers of a channel, shape (n,); KeyError if there is none of that name."""
+        self.channels.index(name)
+        return self._read(name)
+
+    def __getitem__(self, name: str) -> NDArray[np.float64]:
+        """Values of a channel in its unit, shape (n,)."""
+        return self.channels[self.channels.index(name)].values(self.raw(name))
+
+    def unit(self, name: str) -> str:
+        return self.channels[self.channels.index(name)].unit
+
+    def measuring(self, measures: str) -> NDArray[np.float64] | None:
+        """Values of the channel that measures e.g. "body angle", or None."""
+        column = self.channels.measuring(measures)
+        return None if column is None else self[self.channels[column].name]
+
+    def blocks(self, rows_per_block: int) -> Iterator[RowBlock]:
+        """The rows again as blocks, in order, for analysis and replay (losses are not repeated)."""
+        if rows_per_block < 1:
+            raise ValueError("a block needs at least one row")
+        tick, status = self.tick, self.status
+        raw = np.column_stack([self.raw(channel.name) for channel in self.channels]).astype(np.int32)
+        for start in range(0, len(tick), rows_per_block):
+            part = slice(start, start + rows_per_block)
+            yield RowBlock(tick=tick[part], raw=raw[part], status=int(status[part][-1]))
+
+    def _read(self, name: str) -> NDArray[Any]:
+        if name not in self._cache:
+            self._cache[name] = self._group[name][:]
+        return self._cache[name]
+
+
+class Session:
+    """A session file, open for reading; close it, or use it in a `with`."""
+
+    def __init__(self, path: Path, file: h5py.File) -> None:
+        self.path = path
+        self._file = file
+        self.created_utc = str(file.attrs["created_utc"])
+        self.software = str(file.attrs["software"])
+        self.streams: Mapping[str, Stream] = {
+            name: Stream(group, path) for name, group in file["streams"].items()
+        }
+        self.rig_text = _text(file, "rig")
+        self.protocol_text = _text(file, "protocol")
+        self.header: dict[str, Any] = json.loads(_text(file, "header"))
+        self.results: dict[str, Any] = {
+            name: json.loads(_text(file, f"results/{name}")) for name in ("live", "final")
+        }
+        self.events = [
+            Event(int(tick), kind.decode(), json.loads(data))
+            for tick, kind, data in zip(
+                file["events/tick"][:], file["events/kind"][:], file["events/data"][:], strict=True
+            )
+        ]
+        columns = [file[f"losses/{name}"][:] for name in ("tick", "rows", "frames", "overruns")]
+        self.losses = [tuple(int(number) for number in row) for row in zip(*columns, strict=True)]
+
+    @property
+    def rig(self) -> RigDescription:
+        """The rig as described when the run began; FileProblems if this version cannot read it."""
+        from rig.files.rig import rig_from_text
+
+        return rig_from_text(self.rig_text, f"{self.path}:/rig")
+
+    @property
+    def protocol(self) -> Protocol:
+        """The protocol as it was when the run began."""
+        from rig.files.protocol import protocol_from_text
+
+        return protocol_from_text(self.protocol_text, f"{self.path}:/protocol")
+
+    def close(self) -> None:
+        self._file.close()
+
+    def __enter__(self) -> Session:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+
+def open_session(path: str | Path) -> Session:
+    """Open a session file.
+
+    FileNotFoundError if there is none; Damaged, in one sentence, if it is no session file, has links out of
+    itself, columns of absurd size, or parts missing or of the wrong type.
+    """
+    place = Path(path)
+    if not place.is_file():
+        raise FileNotFoundError(2, "no such session file", str(path))
+    try:
+        file = h5py.File(place, "r")
+    except OSError:
+        raise Damaged(f"{path} is not an HDF5 file, or a damaged one") from None
+    try:
+        if "haltere_format" not in file.attrs:
+            raise Damaged(f"{path} is not a Haltere session")
+        if int(file.attrs["haltere_format"]) != 1:
+            raise Damaged(f"{path} is a session of a format this version does not read")
+        _inspect(file, place)
+        return Session(place, file)
+    except Damaged:
+        file.close()
+        raise
+    except (KeyError, ValueError, TypeError, AttributeError, OSError, RuntimeError) as error:
+        file.close()
+        words = str(error).strip("'\"").split("\n")[0]
+        raise Damaged(f"{path} is damaged: {words}") from None
+
+
+def _inspect(file: h5py.File, path: Path) -> None:
+    """Refuse what could lead out of the file or fill the memory before anything is read."""
+    size = path.stat().st_size
+
+    def look(group: h5py.Group) -> None:
+        for name in group:
+            link = group.get(name, getlink=True)
+            if not isinstance(link, h5py.HardLink):
+                raise Damaged(f"{path}: {group.name}/{name} links to another place")
+            item = group[name]
+            if isinstance(item, h5py.Group):
+                look(item)
+                continue
+            if item.is_virtual or item.external:
+                raise Damaged(f"{path}: {item.name} keeps its data in another file")
+            if item.size and item.size * item.dtype.itemsize > MOST_EXPANSION * size + 2**20:
+                raise Damaged(f"{path}: {item.name} claims {item.size} values, more than the file can hold")
+
+    look(file)
+    for stream in file["streams"].values():
+        for name, data in stream.items():
+            wanted = {"tick": "u8", "time_s": "f8", "status": "u2"}.get(name, "i4")
+            if data.ndim != 1 or data.dtype != np.dtype(wanted):
+                raise Damaged(
+                    f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
+                )
+
+
+def _channel(name: str, data: h5py.Dataset) -> Channel:
+    attributes = data.attrs
+    return Channel(
+        name=name,
+        measures=str(attributes["measures"]),
+        unit=str(attributes["unit"]),
+        scale=float(attributes["scale"]),
+        offset=float(attributes["offset"]),
+        delay_s=float(attributes["delay_s"]),
+        low_raw=int(attributes["low_raw"]),
+        high_raw=int(attributes["high_raw"]),
+        calibration=str(attributes["calibration"]),
+    )
+
+
+def _text(file: h5py.File, name: str) -> str:
+    value = file[name][()]
+    return value.decode() if isinstance(value, bytes) else str(value)
