@@ -136,8 +136,8 @@ class SimulatedBench(Bench):
         if whole > self._board.row:
             self._clock.sleep_s(self._time_of(whole) - now_s)
             self._advance_to(whole)
-        elif not self._line.frames:
-            self._clock.sleep_s(max_wait_s)
+        if not self._line.frames:  # nothing was due, or nothing arrived
+            self._clock.sleep_s(now_s + max_wait_s - self._clock.now_s())
         if self.faults.unplugged:
             self._need_link()
         frames, blocks = self._line.take()

@@ -93,9 +93,7 @@ class Sensors:
         self.memory[ro.CRANK_MARK] = rest[0, OUT_CRANK]
         self.memory[ro.MOVED_ROW] = -math.inf
 
-    def _specify(
-        self, column: int, channel: Channel, facts: SensorFacts, world: World, row_s: float
-    ) -> None:
+    def _specify(self, column: int, channel: Channel, facts: SensorFacts, world: World, row_s: float) -> None:
         spec = self._spec[column]
         if channel.measures == "temperature":
             # The air beside the bench; a winding's true temperature is nobody's to read.

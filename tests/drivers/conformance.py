@@ -5,7 +5,7 @@
         def bench(self) -> Bench: ...      # closed, at standstill, free to be driven
 
 The tests need `spin_v`, a drive at which the crank surely turns, `coast_s`, in which it surely stops from
-there, and a tap that the resting body shows. Tests of parts that a bench does not have are skipped by its own capabilities.
+there, and a tap that the resting body shows. What a bench does not have is skipped by its capabilities.
 """
 
 from __future__ import annotations

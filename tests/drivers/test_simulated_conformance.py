@@ -29,7 +29,5 @@ class TestBareBoomNearTickWrap(BenchConformance):
 
     @pytest.fixture
     def bench(self) -> Bench:
-        facts = BoardFacts(
-            boot_tick=2**32 - 250_000, frame_rows=7, tapper=False, sync=False, releaser=False
-        )
+        facts = BoardFacts(boot_tick=2**32 - 250_000, frame_rows=7, tapper=False, sync=False, releaser=False)
         return make_bench(board=facts)

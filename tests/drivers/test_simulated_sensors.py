@@ -74,9 +74,7 @@ def test_the_zero_of_the_load_cell_walks_at_random() -> None:
 
 
 def test_a_converter_saturates_at_its_limits() -> None:
-    narrow = ChannelTable(
-        (Channel("load", "vertical load", "N", 5.0 / 2048, low_raw=-2048, high_raw=2047),)
-    )
+    narrow = ChannelTable((Channel("load", "vertical load", "N", 5.0 / 2048, low_raw=-2048, high_raw=2047),))
     bench = make_bench(channels=narrow, sensors={})
     owner = Owner(bench, bench.open())
     bench.enable()
