@@ -39,6 +39,14 @@ UNIT_ENDINGS = (
     ("_m", "m"),
     ("_h", "H"),
 )
+#: Parts a mechanism lacks when the named constant is zero; their other constants then mean nothing.
+ABSENT_WHEN_ZERO = {
+    "wing_": "wing_area_m2",
+    "shuttle_": "shuttle_mass_kg",
+    "flutter_": "flutter_damping_n_m_s",
+    "carriage_stiffness": "carriage_stiffness_n_per_m",
+    "motor_coulomb": "motor_coulomb_n_m",
+}
 
 
 @dataclass(frozen=True)
@@ -58,8 +66,11 @@ def constant_facts(rig: RigDescription) -> list[Fact]:
     """Mechanism constants that are in play, with their uncertainty where the rig file states one."""
     if rig.mechanism is None:
         return []
+    absent = [part for part, size in ABSENT_WHEN_ZERO.items() if not getattr(rig.mechanism, size)]
     facts = []
     for field in fields(rig.mechanism):
+        if any(field.name.startswith(part) for part in absent):
+            continue
         value = getattr(rig.mechanism, field.name)
         name, unit = split_unit(field.name)
         if field.name in rig.unknown:
@@ -99,7 +110,9 @@ def channel_lines(rig: RigDescription) -> list[ChannelLine]:
     lines = []
     for channel in rig.channels:
         if channel.counts_per_turn:
-            scale = f"{channel.counts_per_turn} counts per turn" + (", index pulse" if channel.index_pulse else "")
+            scale = f"{channel.counts_per_turn} counts per turn" + (
+                ", index pulse" if channel.index_pulse else ""
+            )
         else:
             scale = f"{bare(channel.scale)} {channel.unit} per count"
         reach = "32 bits"

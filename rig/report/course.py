@@ -35,8 +35,8 @@ def course_figure(
     from matplotlib.figure import Figure
 
     with rc_context(palette.FIGURE_STYLE):
-        figure = Figure(figsize=(7.3, 5.4), layout="constrained")
-        drive, flap, body = figure.subplots(3, 1, sharex=True, height_ratios=(1.0, 1.0, 1.9))
+        figure = Figure(figsize=(7.3, 5.6), layout="constrained")
+        drive, flap, taps, body = figure.subplots(4, 1, sharex=True, height_ratios=(1.0, 1.0, 0.22, 1.9))
         time = np.asarray(streams.time_s, dtype=np.float64)
         _drive(drive, rig, streams, events, clock, time)
         crank = channel(streams, rig, "crank angle")
@@ -56,10 +56,10 @@ def course_figure(
             body.set_xlim(time[0], time[-1])
         stops = (rig.stops.low_rad * RAD_TO_DEG, rig.stops.high_rad * RAD_TO_DEG)
         reach = stops[1] - stops[0]
-        body.set_ylim(stops[0] - 0.14 * reach, stops[1] + 0.24 * reach)
+        body.set_ylim(stops[0] - 0.12 * reach, stops[1] + 0.12 * reach)
         end_stops(body, stops)
-        _taps(body, result, clock, stops[1] + 0.17 * reach)
-        for axes in (drive, flap, body):
+        _taps(taps, result, clock)
+        for axes in (drive, flap, taps, body):
             _levels(axes, events, clock, number=axes is drive)
             _trips(axes, events, clock)
         return figure
@@ -118,13 +118,17 @@ def level_spans(events: Sequence[Event], clock: BoardClock) -> list[tuple[int, f
     return spans
 
 
-def _taps(axes: Axes, result: SessionResult, clock: BoardClock, height: float) -> None:
+def _taps(axes: Axes, result: SessionResult, clock: BoardClock) -> None:
+    axes.set_ylabel("taps", rotation="horizontal", ha="right", va="center")
+    axes.set_ylim(-1.0, 1.0)
+    axes.tick_params(left=False, labelleft=False, bottom=False)
+    axes.spines[["left", "bottom"]].set_visible(False)
     for tap in result.taps:
         push = tap.kick_rad_per_s if tap.kick_rad_per_s is not None else tap.impulse_n_m_s
         marker = "d" if push is None else "^" if push > 0.0 else "v"
         colour = palette.GREEN if tap.returned else palette.VERMILLION
         axes.plot(
-            [clock.seconds(tap.tick)], [height], marker=marker, markersize=4.2, linestyle="none", color=colour,
+            [clock.seconds(tap.tick)], [0.0], marker=marker, markersize=4.2, linestyle="none", color=colour,
             markerfacecolor=colour if tap.returned else palette.PAPER, markeredgewidth=0.9, zorder=4,
         )  # fmt: skip
 

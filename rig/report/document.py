@@ -15,14 +15,14 @@ from rig.report.cautions import CAUTIONS
 from rig.report.course import course_figure
 from rig.report.curves import MapCurve, straight_fit
 from rig.report.provenance import Provenance
-from rig.report.rounding import NOT_KNOWN, measured_text
+from rig.report.rounding import NOT_KNOWN, bare, half_width_text, measured_text, value_text
 from rig.report.stability import map_figure
 from rig.report.tapfit import Fit, ShownTap, plain_fit, representative_taps, shown_tap, tap_figure
 from rig.report.timing import BoardClock
 from rig.report.trace import Streams
 from rig.report.vector import inline_svg
 from rig.report.wording import duration
-from rig.results import SessionResult
+from rig.results import Measured, SessionResult
 from rig.steps import Protocol
 
 RAD_TO_DEG = 180.0 / np.pi
@@ -77,7 +77,7 @@ def render(
     levels = tables.visited_levels(events)
     stops = (rig.stops.low_rad * RAD_TO_DEG, rig.stops.high_rad * RAD_TO_DEG)
     chart = map_figure(result, theory, fit=fit or straight_fit(result), stops_deg=stops)
-    shown = _shown_taps(rig, result, streams, clock, levels, fit_tap)
+    shown = _shown_taps(rig, result, streams, events, clock, levels, fit_tap)
     environment = Environment(
         loader=PackageLoader("rig.report", "."), autoescape=True, undefined=StrictUndefined, trim_blocks=True,
         lstrip_blocks=True,
@@ -129,9 +129,13 @@ def render(
     )
 
 
+def _brief(decay: Measured) -> str:
+    return f"{value_text(decay)} {half_width_text(decay)} 1/s" if decay.value is not None else NOT_KNOWN
+
+
 MAP_DESCRIPTION = (
-    "Stability map: slow stiffness against flap rate squared, decay rate and mean angle against flap rate, each "
-    "with 95 % intervals; the numbers are in the level table."
+    "Stability map: slow stiffness against flap rate squared, decay rate and mean angle against flap rate, "
+    "each with 95 % intervals; the numbers are in the level table."
 )
 COURSE_DESCRIPTION = "Drive voltage, flap rate and body angle over the session, with levels and taps marked."
 
@@ -140,20 +144,24 @@ def _shown_taps(
     rig: RigDescription,
     result: SessionResult,
     streams: Streams,
+    events: Sequence[Event],
     clock: BoardClock,
     levels: dict[int, tuple[float, str]],
     fit: Fit,
 ) -> list[ShownTap]:
     drives = {number: drive for number, (drive, _) in levels.items()}
     chosen = representative_taps(result, drives)
-    made = [shown_tap(place, tap, rig, streams, clock, fit) for place, tap in chosen]
+    ends = [clock.seconds(tap.tick) for tap in result.taps]
+    ends += [clock.seconds(event.tick) for event in events if event.kind in ("level_end", "halt", "finished")]
+    made = []
+    for place, tap in chosen:
+        until_s = min((end for end in ends if end > (tap.end_s or 0.0)), default=float("inf"))
+        made.append(shown_tap(place, tap, rig, streams, clock, fit, until_s))
     return [tap for tap in made if tap is not None]
 
 
 def _tap_view(shown: ShownTap, levels: dict[int, tuple[float, str]], number: int) -> dict[str, Any]:
     from markupsafe import Markup
-
-    from rig.report.rounding import bare
 
     tap = shown.tap
     drive, direction = levels[tap.level]
@@ -165,6 +173,6 @@ def _tap_view(shown: ShownTap, levels: dict[int, tuple[float, str]], number: int
         "mode": measured_text(tap.mode_hz, "Hz"),
         "stiffness": measured_text(tap.stiffness_per_s2, "1/s²"),
         "residual": f"{bare(RAD_TO_DEG * shown.fit.residual_rms_rad, 2)} deg",
-        "variations": [(name, measured_text(decay, "1/s")) for name, decay in shown.variations],
+        "variations": [(name, _brief(decay)) for name, decay in shown.variations],
         "reason": tap.reason,
     }

@@ -20,12 +20,10 @@ def expected_wrong(result: SessionResult) -> str:
     count = verdicts_at_95(result)
     if count == 0:
         return "No statement of this session rests on a 95 % interval."
-    wrong = 0.05 * count
-    few = f"about {bare(wrong, 2)}" if wrong >= 0.95 else f"{bare(wrong, 2)} on average"
-    noun = "verdict rests" if count == 1 else "verdicts rest"
+    verdicts = "1 verdict rests" if count == 1 else f"{count} verdicts rest"
     return (
-        f"{count} {noun} on a 95 % interval. By chance alone {few} of them would be expected to be wrong, "
-        "even with every assumption right; which ones, the data cannot say."
+        f"{verdicts} on 95 % intervals. Expected to be wrong by chance alone, even with every assumption "
+        f"right: {bare(0.05 * count, 2)} on average. Which, the data cannot say."
     )
 
 
@@ -34,8 +32,8 @@ def limits_and_doubts(rig: RigDescription, result: SessionResult) -> list[str]:
     doubts = []
     if rig.simulated:
         doubts.append(
-            "Simulated rig: no physical board was involved. The numbers show how the method behaves on a known "
-            "mechanism; they say nothing of a built one."
+            "Simulated rig: no physical board was involved. The numbers show how the method behaves on a "
+            "known mechanism; they say nothing of a built one."
         )
     doubts.append(expected_wrong(result))
     doubts += [sentence(remark) for remark in result.remarks]
@@ -45,19 +43,28 @@ def limits_and_doubts(rig: RigDescription, result: SessionResult) -> list[str]:
         doubts.append(share)
     undetermined = sum(level.regime == "undetermined" for level in result.levels)
     if undetermined:
-        doubts.append(f"{undetermined} of {len(result.levels)} levels stay undetermined; their reasons stand in the table.")
+        doubts.append(
+            f"{undetermined} of {len(result.levels)} levels stay undetermined; their reasons stand in the "
+            "table."
+        )
     for name, finding in (("vibrational", result.vibration), ("passive", result.passivity)):
         if finding.verdict == "not_testable":
             doubts.append(f"This session cannot show that the hold is {name}. {sentence(finding.reason)}")
     if rig.unknown:
-        doubts.append(f"Mechanism constants not known: {', '.join(rig.unknown)}. Theory that needs them is not testable.")
+        doubts.append(
+            f"Mechanism constants not known: {', '.join(rig.unknown)}. Theory that needs them is not "
+            "testable."
+        )
     if result.theory.reason:
         doubts.append(f"Theory: {sentence(result.theory.reason)}")
     if result.lost_rows or result.lost_frames:
-        doubts.append(f"{result.lost_rows} rows and {result.lost_frames} frames were lost; intervals with gaps are not fitted.")
+        doubts.append(
+            f"{result.lost_rows} rows and {result.lost_frames} frames were lost; intervals with gaps are "
+            "not fitted."
+        )
     doubts.append(
-        "A drive held by a tap of a given size is not held for every larger one: the basin of the held state shrinks "
-        "to nothing at the boundary. One decay rate stands for a whole interval; where damping depends on amplitude "
-        "it belongs to neither end."
+        "A drive held by a tap of a given size is not held for every larger one: the basin of the held "
+        "state shrinks to nothing at the boundary. One decay rate stands for a whole interval; where "
+        "damping depends on amplitude it belongs to neither end."
     )
     return doubts

@@ -5,40 +5,43 @@ from __future__ import annotations
 METHODS = (
     (
         "Flap rate",
-        "unwrapped crank phase from end to end of the dwell, divided by the time; its uncertainty includes slow wander.",
+        "unwrapped crank phase from end to end of the dwell, divided by the time; its uncertainty includes "
+        "slow wander.",
     ),
     (
         "Mean angle and load",
-        "averages over whole crank turns, so that the flap ripple cancels; a load below its own uncertainty is "
-        "told as not resolvable.",
+        "averages over whole crank turns, so that the flap ripple cancels; a load below its own uncertainty "
+        "is told as not resolvable.",
     ),
     (
         "Decay rate and slow mode",
-        "the record after a tap is fitted with exp(−σt)[c₁ C(q,t) + c₂ S(q,t)] + offset + drift + two crank harmonics, "
-        "q = ω_d² of either sign, by variable projection [1]. The 95 % interval is the widest of ordinary least "
-        "squares, a robust one for correlated residuals [2], and a state-space likelihood of the records before and "
-        "after the tap. An interval that touches an end stop is not fitted.",
+        "the record after a tap is fitted with exp(−σt)[c₁ C(q,t) + c₂ S(q,t)] + offset + drift + two crank "
+        "harmonics, q = ω² of either sign, ω the damped angular frequency, by variable projection [1]. The "
+        "95 % interval is the widest of ordinary least squares, a robust one for correlated residuals [2], "
+        "and a state-space likelihood of the records before and after the tap. An interval that touches an "
+        "end stop is not fitted.",
     ),
     (
         "Slow stiffness",
-        "κ = ω_d² + σ², per unit inertia; negative when the body diverges.",
+        "κ = ω² + σ², per unit inertia; negative when the body diverges.",
     ),
     (
         "Regime",
-        "stable or unstable only where the interval of the decay rate, widened by a guard band, lies on one side of "
-        "zero [3] and the checks for contact, friction and bouncing pass; else undetermined.",
+        "stable or unstable only where the interval of the decay rate, widened by a guard band, lies on one "
+        "side of zero [3] and the checks for contact, friction and bouncing pass; else undetermined.",
     ),
     (
         "Boundary",
-        "falling: mean angle and slow stiffness of all held levels are fitted together with one averaged potential "
-        "whose edge is itself a parameter [4, 5]; interval by profile likelihood. Rising: between the last level at "
-        "which the body was not captured and the first at which it was. The voltage follows from the local line of "
-        "flap rate on drive and moves with winding temperature; the flap rate does not.",
+        "falling: mean angle and slow stiffness of all held levels are fitted together with one averaged "
+        "potential whose edge is itself a parameter [4, 5]; interval by profile likelihood. Rising: between "
+        "the last level at which the body was not captured and the first at which it was. The voltage "
+        "follows from the local line of flap rate on drive and moves with winding temperature; the flap "
+        "rate does not.",
     ),
     (
         "Theory",
-        "averaged potential of the vibrated body [4, 5]; multipliers of the periodic orbit (Floquet); Mathieu functions for the "
-        "undamped limit [6].",
+        "averaged potential of the vibrated body [4, 5]; multipliers of the periodic orbit (Floquet); "
+        "Mathieu functions for the undamped limit [6].",
     ),
     (
         "Numbers",

@@ -7,6 +7,8 @@ the marker's shape, regime its filling.
 
 from __future__ import annotations
 
+from typing import Any
+
 BLACK = "#000000"
 ORANGE = "#E69F00"
 SKY_BLUE = "#56B4E9"
@@ -28,7 +30,7 @@ THEORY_COLOUR = INK
 FIT_COLOUR = GREEN
 
 #: Settings of the plotting library used while a figure is made and written.
-FIGURE_STYLE: dict[str, object] = {
+FIGURE_STYLE: dict[Any, Any] = {
     "figure.facecolor": PAPER,
     "axes.facecolor": PAPER,
     "axes.edgecolor": FAINT,

@@ -44,12 +44,18 @@ def limit_lines(rig: RigDescription, result: SessionResult, streams: Streams) ->
         ("load", "load", limits.load_n, "N", _largest(channel(streams, rig, "vertical load"))),
     ):
         if limit is not None:
-            lines.append(LimitLine(name, f"{bare(limit)} {unit}", _with_unit(reached, unit), _halt(rig, cause)))
+            lines.append(
+                LimitLine(name, f"{bare(limit)} {unit}", _with_unit(reached, unit), _halt(rig, cause))
+            )
     angle = channel(streams, rig, "body angle")
     reach = NOT_KNOWN
     if angle is not None and len(angle):
-        reach = f"{bare(RAD_TO_DEG * float(angle.min()), 3)} to {bare(RAD_TO_DEG * float(angle.max()), 3)} deg"
-    travel = f"{bare(RAD_TO_DEG * limits.travel_low_rad, 3)} to {bare(RAD_TO_DEG * limits.travel_high_rad, 3)} deg"
+        reach = (
+            f"{bare(RAD_TO_DEG * float(angle.min()), 3)} to {bare(RAD_TO_DEG * float(angle.max()), 3)} deg"
+        )
+    travel = (
+        f"{bare(RAD_TO_DEG * limits.travel_low_rad, 3)} to {bare(RAD_TO_DEG * limits.travel_high_rad, 3)} deg"
+    )
     lines.insert(3, LimitLine("body travel", travel, reach, _halt(rig, "travel")))
     return lines
 
@@ -123,10 +129,15 @@ def loss_sentence(result: SessionResult, events: Sequence[Event]) -> str:
 
 def zero_sentence(events: Sequence[Event]) -> str:
     """Encoder zero before and after the run: a slipped zero shows as a shift."""
-    zeros = [float(event.data["body_rad"]) for event in events if event.kind == "zero" and event.data.get("body_rad") is not None]
+    zeros = [
+        float(event.data["body_rad"])
+        for event in events
+        if event.kind == "zero" and event.data.get("body_rad") is not None
+    ]
     if not zeros:
         return "The encoder zero was not taken in this session."
     if len(zeros) == 1:
-        return f"Rest angle with the drive off: {bare(RAD_TO_DEG * zeros[0], 3)} deg; it was taken once, so a slipped zero would not show."
+        rest = bare(RAD_TO_DEG * zeros[0], 3)
+        return f"Rest angle with the drive off: {rest} deg, taken once: a slipped zero would not show."
     shift = RAD_TO_DEG * (zeros[-1] - zeros[0])
     return f"Rest angle with the drive off, first against last time: shifted by {bare(shift, 2)} deg."

@@ -108,6 +108,16 @@ def interval_text(measured: Measured) -> str:
     return f"below {upper}" if known(high) else ""
 
 
+def half_width_text(measured: Measured) -> str:
+    """The 95 % interval as "±0.0022" where its two sides round to the same, else as its limits."""
+    std, value, low, high = std_of(measured), measured.value, measured.low, measured.high
+    if std is None or value is None or low is None or high is None or not math.isfinite(high - low):
+        return interval_text(measured)
+    places = decimals_for(std)
+    below, above = fixed(value - low, places), fixed(high - value, places)
+    return f"±{above}" if below == above else interval_text(measured)
+
+
 def measured_text(measured: Measured, unit: str = "") -> str:
     """Value, unit and interval in one phrase: "25.882 Hz (25.835 to 25.929)"."""
     if measured.value is None or not math.isfinite(measured.value):

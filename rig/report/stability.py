@@ -10,7 +10,7 @@ import numpy as np
 
 from rig.report import palette
 from rig.report.curves import MapCurve
-from rig.results import Boundary, LevelResult, Measured, SessionResult
+from rig.results import LevelResult, Measured, SessionResult
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -26,8 +26,8 @@ def map_figure(
     fit: MapCurve | None = None,
     stops_deg: tuple[float, float] | None = None,
 ) -> Figure:
-    """Stability map of a session: slow stiffness (1/s^2) against flap rate squared (Hz^2) with 95 % intervals,
-    below it decay rate (1/s) and mean body angle (deg) against flap rate (Hz).
+    """Stability map: slow stiffness (1/s^2) against flap rate squared (Hz^2) with 95 % intervals, below it
+    decay rate (1/s) and mean body angle (deg) against flap rate (Hz).
 
     Falling and rising levels differ in the marker's direction and colour, regimes in its filling. The body's
     boundaries are bands as wide as their 95 % intervals; levels at which the body was not held are ticks on
@@ -35,10 +35,11 @@ def map_figure(
     """
     from matplotlib import rc_context
     from matplotlib.figure import Figure
+    from matplotlib.layout_engine import ConstrainedLayoutEngine
 
     with rc_context(palette.FIGURE_STYLE):
-        figure = Figure(figsize=(WIDTH_IN, HEIGHT_IN), layout="constrained")
-        figure.get_layout_engine().set(h_pad=0.06, w_pad=0.06, hspace=0.03, wspace=0.04)  # type: ignore[union-attr]
+        spacing = ConstrainedLayoutEngine(h_pad=0.06, w_pad=0.06, hspace=0.03, wspace=0.04)
+        figure = Figure(figsize=(WIDTH_IN, HEIGHT_IN), layout=spacing)
         grid = figure.add_gridspec(2, 2, height_ratios=(1.55, 1.0))
         stiffness = figure.add_subplot(grid[0, :])
         decay = figure.add_subplot(grid[1, 0])
@@ -186,7 +187,7 @@ def _levels(
 
 
 def _ends(numbers: Iterable[Measured]) -> list[float]:
-    """Values and interval ends; a very wide interval counts no more than its value, lest it flatten the rest."""
+    """Values and interval ends; the ends of a very wide interval are left out, lest it flatten the rest."""
     known = [number for number in numbers if number.value is not None and math.isfinite(number.value)]
     if not known:
         return []
@@ -244,8 +245,8 @@ def _not_held_strip(axes: Axes, levels: Iterable[LevelResult]) -> None:
         colour = palette.DIRECTION_COLOUR.get(level.direction, palette.INK)
         height = 0.075 if level.direction == "rising" else 0.035
         axes.plot(
-            [level.flap_hz.value**2], [height], marker="x", markersize=4.6, markeredgewidth=1.1, linestyle="none",
-            color=colour, transform=axes.get_xaxis_transform(), zorder=3,
+            [level.flap_hz.value**2], [height], marker="x", markersize=4.6, markeredgewidth=1.1,
+            linestyle="none", color=colour, transform=axes.get_xaxis_transform(), zorder=3,
         )  # fmt: skip
         drawn = True
     if drawn:

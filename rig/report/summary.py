@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from rig.report.rounding import NOT_KNOWN, bare, fixed, interval_text, measured_text, value_text
-from rig.report.wording import DIRECTION_SIGNS, KIND_WORDS, VERDICT_WORDS, boundary_sentence, sentence, words
+from rig.report.wording import DIRECTION_SIGNS, KIND_WORDS, VERDICT_WORDS, sentence, words
 from rig.results import Boundary, Finding, Measured, SessionResult
 
 #: Names and units of the numbers a finding may carry.
@@ -29,7 +29,7 @@ class BoundaryCard:
     drive: str
     drive_interval: str
     kind: str
-    sentence: str
+    reason: str
 
 
 @dataclass(frozen=True)
@@ -59,8 +59,8 @@ def boundary_card(direction: str, boundary: Boundary) -> BoundaryCard:
         flap_interval=interval_text(boundary.flap_hz) or NOT_KNOWN,
         drive=value_text(boundary.drive_v),
         drive_interval=interval_text(boundary.drive_v) or NOT_KNOWN,
-        kind=KIND_WORDS.get(boundary.kind, words(boundary.kind)),
-        sentence=boundary_sentence(direction, boundary),
+        kind=sentence(KIND_WORDS.get(boundary.kind, words(boundary.kind))),
+        reason=sentence(boundary.reason),
     )
 
 
@@ -110,7 +110,9 @@ def _theory_line(name: str, unit: str, predicted: float | None, found: Measured)
     if found.low is None or found.high is None:
         return TheoryLine(name, told, difference, "interval not known")
     inside = found.low <= predicted <= found.high
-    return TheoryLine(name, told, difference, "inside the 95 % interval" if inside else "outside the 95 % interval")
+    return TheoryLine(
+        name, told, difference, "inside the 95 % interval" if inside else "outside the 95 % interval"
+    )
 
 
 def headline(result: SessionResult) -> str:
@@ -120,12 +122,12 @@ def headline(result: SessionResult) -> str:
     if falling and rising:
         return (
             f"Falling, the body holds itself down to {value_text(result.falling.flap_hz)} Hz; "
-            f"rising, it is captured from {value_text(result.rising.flap_hz)} Hz on."
+            f"rising, it is captured from {value_text(result.rising.flap_hz)} Hz."
         )
     if falling:
         return f"Falling, the body holds itself down to {value_text(result.falling.flap_hz)} Hz."
     if rising:
-        return f"Rising, the body is captured from {value_text(result.rising.flap_hz)} Hz on."
+        return f"Rising, the body is captured from {value_text(result.rising.flap_hz)} Hz."
     held = sum(level.state == "held" for level in result.levels)
     if not result.levels:
         return "No level was measured: there is no verdict."

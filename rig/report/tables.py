@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from rig.events import Event
-from rig.report.rounding import NOT_KNOWN, bare, interval_text, value_text
+from rig.report.rounding import NOT_KNOWN, bare, fixed, half_width_text, value_text
 from rig.report.timing import BoardClock
 from rig.report.wording import DIRECTION_SIGNS, REGIME_SIGNS, seconds, sentence, words
 from rig.results import LevelResult, Measured, SessionResult, TapResult
@@ -48,7 +48,7 @@ LEVEL_HEADINGS = (
     ("stiffness κ", "1/s²"),
     ("shake", "mm"),
     ("winding", "°C"),
-    ("writes", ""),
+    ("locked writes", ""),
 )
 
 
@@ -72,7 +72,7 @@ def level_rows(levels: Sequence[LevelResult]) -> list[LevelRow]:
                 role="" if level.role == "level" else level.role,
                 cells=(
                     *(cell(number) for number in measured),
-                    Cell(NOT_KNOWN if level.winding_deg_c is None else bare(level.winding_deg_c, 3)),
+                    Cell(NOT_KNOWN if level.winding_deg_c is None else fixed(level.winding_deg_c, 1)),
                     Cell(NOT_KNOWN if level.writes is None else str(level.writes)),
                 ),
                 returned=f"{level.returned} of {level.taps}",
@@ -86,11 +86,14 @@ def level_rows(levels: Sequence[LevelResult]) -> list[LevelRow]:
 
 
 def cell(number: Measured) -> Cell:
-    return Cell(value_text(number), interval_text(number))
+    return Cell(value_text(number), half_width_text(number))
 
 
 def _scaled(number: Measured, factor: float) -> Measured:
-    scaled = [None if part is None else factor * part for part in (number.value, number.std, number.low, number.high)]
+    scaled = [
+        None if part is None else factor * part
+        for part in (number.value, number.std, number.low, number.high)
+    ]
     return Measured(*scaled)
 
 
@@ -106,6 +109,7 @@ class TapRow:
     outcome_sign: str
     used: str
     accepted: bool
+    fitted: bool
     interval: str
     decay: Cell
     mode: Cell
@@ -113,7 +117,9 @@ class TapRow:
     reason: str
 
 
-def tap_rows(result: SessionResult, clock: BoardClock, levels: Mapping[int, tuple[float, str]]) -> list[TapRow]:
+def tap_rows(
+    result: SessionResult, clock: BoardClock, levels: Mapping[int, tuple[float, str]]
+) -> list[TapRow]:
     """One row a tap; `levels` gives drive (V) and direction of each visited level."""
     return [_tap_row(tap, clock, levels) for tap in result.taps]
 
@@ -128,17 +134,18 @@ def _tap_row(tap: TapResult, clock: BoardClock, levels: Mapping[int, tuple[float
         number=tap.tap,
         level=f"{DIRECTION_SIGNS.get(known[1], '')} {bare(known[0], 4)} V" if known else f"level {tap.level}",
         time=seconds(clock.seconds(tap.tick)),
-        impulse=EMPTY if tap.impulse_n_m_s is None else bare(1e3 * tap.impulse_n_m_s, 3),
-        kick=EMPTY if tap.kick_rad_per_s is None else bare(RAD_TO_DEG * tap.kick_rad_per_s, 3),
+        impulse=EMPTY if tap.impulse_n_m_s is None else fixed(1e3 * tap.impulse_n_m_s, 3),
+        kick=EMPTY if tap.kick_rad_per_s is None else fixed(RAD_TO_DEG * tap.kick_rad_per_s, 1),
         push=EMPTY if not push else "up" if push > 0.0 else "down",
         outcome="returned" if tap.returned else "lost",
         outcome_sign="●" if tap.returned else "✕",
         used="used" if tap.accepted else "left out",
         accepted=tap.accepted,
+        fitted=tap.start_s is not None,
         interval=window,
         decay=cell(tap.decay_per_s) if tap.decay_per_s.value is not None else Cell(EMPTY),
         mode=cell(tap.mode_hz) if tap.mode_hz.value is not None else Cell(EMPTY),
-        amplitude=EMPTY if tap.amplitude_deg is None else bare(tap.amplitude_deg, 3),
+        amplitude=EMPTY if tap.amplitude_deg is None else fixed(tap.amplitude_deg, 2),
         reason=sentence(tap.reason),
     )
 
@@ -153,13 +160,31 @@ def visited_levels(events: Sequence[Event]) -> dict[int, tuple[float, str]]:
 
 
 def excluded_lines(result: SessionResult) -> list[str]:
-    """Everything left out of the answer, one sentence each: taps first, then what else was excluded."""
-    lines = [f"Tap {tap.tap}: {sentence(tap.reason) or 'Reason ' + NOT_KNOWN + '.'}" for tap in result.taps if not tap.accepted]
-    told = {tap.tap for tap in result.taps if not tap.accepted}
+    """Everything left out of the answer and why: taps of one reason together, then whatever else."""
+    reasons: dict[str, list[int]] = {}
+    for tap in result.taps:
+        if not tap.accepted:
+            reasons.setdefault(sentence(tap.reason) or f"Reason {NOT_KNOWN}.", []).append(tap.tap)
+    lines = [
+        f"{'Tap' if len(taps) == 1 else 'Taps'} {runs(taps)}: {reason}" for reason, taps in reasons.items()
+    ]
+    told = {tap for taps in reasons.values() for tap in taps}
     for entry in result.excluded:
         if entry.get("tap") in told:
             continue
-        rest = {key: value for key, value in entry.items() if key != "reason"}
-        what = ", ".join(f"{words(key)} {value}" for key, value in rest.items())
-        lines.append(f"{what.capitalize()}: {sentence(str(entry.get('reason', NOT_KNOWN)))}".lstrip(": "))
+        rest = [f"{words(key)} {value}" for key, value in entry.items() if key != "reason"]
+        what = ", ".join(rest) or "left out"
+        lines.append(f"{what.capitalize()}: {sentence(str(entry.get('reason') or 'reason ' + NOT_KNOWN))}")
     return lines
+
+
+def runs(numbers: Sequence[int]) -> str:
+    """Whole numbers in order, with runs of three or more as "4 to 9"."""
+    parts: list[list[int]] = []
+    for number in sorted(numbers):
+        if parts and number == parts[-1][-1] + 1:
+            parts[-1].append(number)
+        else:
+            parts.append([number])
+    told = [f"{part[0]} to {part[-1]}" if len(part) > 2 else ", ".join(map(str, part)) for part in parts]
+    return ", ".join(told)

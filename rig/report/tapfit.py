@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -11,7 +11,6 @@ from numpy.typing import NDArray
 
 from analysis.position import turn_means
 from rig.description import RigDescription
-from rig.events import Event
 from rig.report import palette
 from rig.report.timing import BoardClock
 from rig.report.trace import Streams, binned, channel, zigzag
@@ -27,7 +26,11 @@ Values = NDArray[np.float64]
 RAD_TO_DEG = 180.0 / np.pi
 BEFORE_S, AFTER_S = 0.8, 0.5
 #: Changes of the fitted interval whose effect is told: later start (s) and share of the interval kept.
-VARIATIONS = (("start 50 ms later", 0.05, 1.0), ("start 150 ms later", 0.15, 1.0), ("last quarter left out", 0.0, 0.75))
+VARIATIONS = (
+    ("start 50 ms later", 0.05, 1.0),
+    ("start 150 ms later", 0.15, 1.0),
+    ("last quarter left out", 0.0, 0.75),
+)
 
 #: Fits one record: time s, angle rad, crank phase rad or None.
 Fit = Callable[[Values, Values, "Values | None"], "DecayFit"]
@@ -35,7 +38,7 @@ Fit = Callable[[Values, Values, "Values | None"], "DecayFit"]
 
 @dataclass(frozen=True)
 class ShownTap:
-    """A tap chosen for its picture: where it lies in the course, its fit, and the fit under other intervals."""
+    """A tap chosen for its picture: its rows, its fit, and the fit under other intervals."""
 
     tap: TapResult
     place: str
@@ -80,9 +83,18 @@ def representative_taps(result: SessionResult, drives_v: dict[int, float]) -> li
 
 
 def shown_tap(
-    place: str, tap: TapResult, rig: RigDescription, streams: Streams, clock: BoardClock, fit: Fit = plain_fit
+    place: str,
+    tap: TapResult,
+    rig: RigDescription,
+    streams: Streams,
+    clock: BoardClock,
+    fit: Fit = plain_fit,
+    until_s: float = float("inf"),
 ) -> ShownTap | None:
-    """Cut the tap out of the streams and fit its interval again; None where the rows are not there."""
+    """Cut the tap out of the streams and fit its interval again; None where the rows are not there.
+
+    until_s: when the next tap comes or the level ends; what follows does not belong in the picture.
+    """
     angle = channel(streams, rig, "body angle")
     if angle is None or tap.start_s is None or tap.end_s is None:
         return None
@@ -90,7 +102,7 @@ def shown_tap(
     time = np.asarray(streams.time_s, dtype=np.float64)
     tap_s = clock.seconds(tap.tick)
     first = min(tap_s, tap.start_s) - BEFORE_S
-    rows = slice(*np.searchsorted(time, (first, tap.end_s + AFTER_S)))
+    rows = slice(*np.searchsorted(time, (first, min(tap.end_s + AFTER_S, until_s - 0.01))))
     inside = slice(*np.searchsorted(time, (tap.start_s, tap.end_s)))
     if inside.stop - inside.start < 2:
         return None
@@ -115,12 +127,12 @@ def _decay(fit: DecayFit) -> Measured:
 
 
 def tap_figure(shown: ShownTap) -> Figure:
-    """Body angle (deg) around a tap with cycle mean and model, and below it the residual (deg) on its own scale."""
+    """Body angle (deg) around a tap with cycle mean and model; below it the residual (deg), own scale."""
     from matplotlib import rc_context
     from matplotlib.figure import Figure
 
     with rc_context(palette.FIGURE_STYLE):
-        figure = Figure(figsize=(7.3, 3.9), layout="constrained")
+        figure = Figure(figsize=(7.3, 3.3), layout="constrained")
         above, below = figure.subplots(2, 1, sharex=True, height_ratios=(2.3, 1.0))
         tap, fit = shown.tap, shown.fit
         start = float(tap.start_s or 0.0)
@@ -142,7 +154,9 @@ def tap_figure(shown: ShownTap) -> Figure:
         below.axhline(0.0, color=palette.INK, linewidth=0.8)
         _mark_interval(above, shown, label="interval used")
         _mark_interval(below, shown)
-        above.text(0.0, 1.01, " tap", transform=above.get_xaxis_transform(), ha="center", va="bottom", fontsize=7.5)
+        above.text(
+            0.0, 1.01, " tap", transform=above.get_xaxis_transform(), ha="center", va="bottom", fontsize=7.5
+        )
         above.set_ylabel("body angle (deg)")
         below.set_ylabel("residual (deg)")
         below.set_xlabel("time since the tap (s)")
@@ -162,7 +176,10 @@ def _slow_model(fit: DecayFit) -> Values:
         # Two real poles: c1 and c2 follow from the angle and the angular rate at the start.
         rate = np.sqrt(max(-squared, 1e-12))
         first = _start_angle(fit)
-        swing = first * np.cosh(rate * time) + (fit.v0_rad_per_s + fit.decay_per_s * first) * np.sinh(rate * time) / rate
+        swing = (
+            first * np.cosh(rate * time)
+            + (fit.v0_rad_per_s + fit.decay_per_s * first) * np.sinh(rate * time) / rate
+        )
     return np.asarray(slow + swing * np.exp(-fit.decay_per_s * time), dtype=np.float64)
 
 
@@ -174,7 +191,5 @@ def _start_angle(fit: DecayFit) -> float:
 
 def _mark_interval(axes: Axes, shown: ShownTap, label: str | None = None) -> None:
     start, end = float(shown.tap.start_s or 0.0) - shown.tap_s, float(shown.tap.end_s or 0.0) - shown.tap_s
-    axes.axvspan(start, end, color=palette.YELLOW, alpha=0.22, linewidth=0.0, zorder=0.2, label=label)
+    axes.axvspan(start, end, color=palette.YELLOW, alpha=0.15, linewidth=0.0, zorder=0.2, label=label)
     axes.axvline(0.0, color=palette.INK, linewidth=0.9, linestyle=(0, (1, 1.5)))
-
-

@@ -77,5 +77,5 @@ def flap_course(time_s: Values, crank_rad: Values, bins: int) -> tuple[Values, V
 
 
 def zigzag(part: Binned) -> tuple[Values, Values]:
-    """Lowest and highest value of each bin in turn, as one line that shows a fast oscillation's full height."""
+    """Lowest and highest value of each bin in turn: a line that shows a fast oscillation's full height."""
     return np.repeat(part.time_s, 2), np.column_stack((part.low, part.high)).ravel()

@@ -24,7 +24,9 @@ def inline_svg(figure: Figure, prefix: str, description: str) -> str:
     FigureCanvasSVG(figure)
     text = io.StringIO()
     with rc_context({**palette.FIGURE_STYLE, "svg.hashsalt": prefix}):
-        figure.savefig(text, format="svg", metadata={"Date": None, "Creator": None, "Format": None, "Type": None})
+        figure.savefig(
+            text, format="svg", metadata={"Date": None, "Creator": None, "Format": None, "Type": None}
+        )
     svg = text.getvalue()
     svg = svg[svg.index("<svg") :]
     svg = re.sub(r"<metadata>.*?</metadata>", "", svg, flags=re.DOTALL)

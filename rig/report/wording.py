@@ -2,9 +2,6 @@
 
 from __future__ import annotations
 
-from rig.report.rounding import bare, measured_text
-from rig.results import Boundary
-
 STATE_WORDS = {
     "held": "held",
     "at_stop": "at an end stop",
@@ -38,21 +35,6 @@ def words(term: str) -> str:
     return STATE_WORDS.get(term, term.replace("_", " "))
 
 
-def boundary_sentence(direction: str, boundary: Boundary) -> str:
-    """One sentence for one side of the boundary."""
-    reason = f" {sentence(boundary.reason)}" if boundary.reason else ""
-    if boundary.kind == "not_located":
-        return f"{direction.capitalize()}: the boundary was not located.{reason}"
-    where = measured_text(boundary.flap_hz, "Hz")
-    drive = measured_text(boundary.drive_v, "V")
-    if direction == "falling":
-        told = f"Falling, the held state ends at {where}, at a drive of {drive}"
-    else:
-        told = f"Rising, the held state begins at {where}, at a drive of {drive}"
-    kind = KIND_WORDS.get(boundary.kind, words(boundary.kind))
-    return f"{told}: {kind}.{reason}"
-
-
 def sentence(text: str) -> str:
     """Capital first letter and a full stop."""
     text = text.strip()
@@ -69,7 +51,3 @@ def seconds(time_s: float | None) -> str:
 def duration(time_s: float) -> str:
     minutes, rest = divmod(time_s, 60.0)
     return f"{int(minutes)} min {rest:.0f} s" if minutes else f"{rest:.1f} s"
-
-
-def percent(ratio: float) -> str:
-    return f"{bare(100.0 * ratio, 2)} %"
