@@ -245,7 +245,7 @@ class SimulatedBench(Bench):
             stop = min(end, board.row + left, board.next_deadline, faults.next_row)
             rows = stop - board.row
             self._frame_status |= board.status
-            sensors.sample(rows, self._frame[self._filled : self._filled + rows])
+            sensors.sample(rows, self._frame[self._filled :] if self._filled else self._frame)
             board.row = stop
             board.moved_row = sensors.memory[ro.MOVED_ROW]
             self._filled += rows

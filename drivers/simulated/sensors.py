@@ -80,6 +80,7 @@ class Sensors:
         self._old = longest + ro.DELAY_NODES - 1
         self._longest_span = board.frame_rows
         self._trace = np.zeros((self._old + self._longest_span, ROW_COLUMNS))
+        self._fresh = self._trace[self._old :]
         self._normals = NormalRows(stream(world.seed, SENSORS), len(channels) + 1)
         self.memory = np.zeros(ro.MEMORY)
         self.memory[ro.WALK_STEP] = world.load_drift_n_per_rt_s * math.sqrt(row_s)
@@ -92,6 +93,9 @@ class Sensors:
         self._trace[: self._old] = rest
         self.memory[ro.CRANK_MARK] = rest[0, OUT_CRANK]
         self.memory[ro.MOVED_ROW] = -math.inf
+        # No rows: compiles the kernel before anything is armed.
+        nothing = np.empty((0, len(channels)), dtype=np.int32)
+        ro.read_out(self._trace, self._old, 0, self._spec, self._normals.take(0), self.memory, nothing)
 
     def _specify(self, column: int, channel: Channel, facts: SensorFacts, world: World, row_s: float) -> None:
         spec = self._spec[column]
@@ -117,9 +121,8 @@ class Sensors:
 
     def sample(self, rows: int, raw: NDArray[np.int32]) -> None:
         """Advance the plant by `rows` rows and write what the sensors show into `raw`."""
-        trace = self._trace
-        self._plant.advance(rows, trace[self._old : self._old + rows])
-        ro.read_out(trace, self._old, rows, self._spec, self._normals.take(rows), self.memory, raw)
+        self._plant.advance(rows, self._fresh)
+        ro.read_out(self._trace, self._old, rows, self._spec, self._normals.take(rows), self.memory, raw)
 
     @property
     def last(self) -> NDArray[np.float64]:

@@ -9,10 +9,12 @@ import pytest
 from conformance import Owner
 from simulated_rigs import make_bench
 
+from analysis.mechanism import equations
 from drivers.clock import VirtualClock
 from drivers.contract import Halt
 from drivers.simulated.bench import SimulatedBench
 from drivers.simulated.noise import NormalRows, stream
+from drivers.simulated.readout import read_out
 from drivers.simulated.world import BoardFacts
 
 
@@ -63,6 +65,16 @@ def test_bytes_do_not_depend_on_how_the_reading_is_cut_up(waits: list[float], sl
     other = played(make_bench(clock=clocks[1], **world), clocks[1], waits, sleep)
     assert 140 < len(plain) < 175  # 3.5 s in frames of 20 ms, some lost
     assert plain == other
+
+
+def test_nothing_is_compiled_once_the_bench_is_built() -> None:
+    clock = VirtualClock()
+    bench = make_bench(clock=clock)
+    kernels = (read_out, equations.advance)
+    before = [len(kernel.signatures) for kernel in kernels]
+    assert all(before)
+    played(bench, clock, [0.137, 0.003, 0.05], False)
+    assert [len(kernel.signatures) for kernel in kernels] == before
 
 
 def test_another_seed_gives_other_bytes() -> None:
