@@ -1,0 +1,363 @@
+"""Walking through the actions of a course, one frame of rows at a time."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any, Protocol
+
+import numpy as np
+
+from drivers.channels import ChannelTable
+from drivers.rows import RowBlock, Status
+from rig.description import RigDescription
+from rig.run import actions as ac
+from rig.run import commands as cm
+from rig.verdicts import Condition, LevelVerdict, TapVerdict, Verdict
+
+#: Attempts at capture per level for a body on an end stop, rising.
+CAPTURE_TRIES = 2
+#: How long the verdict of an interval is waited for before going on without it.
+VERDICT_S = 2.0
+HELD = ("held", "friction_held")
+
+
+class Input(Protocol):
+    """An operator's input as `rig.run.runner.OperatorInput` has it."""
+
+    @property
+    def kind(self) -> str: ...
+
+    @property
+    def reason(self) -> str: ...
+
+
+@dataclass(frozen=True)
+class Standing:
+    """Where a run stands: action number, of how many, level, drive, the body's state, a prompt that waits."""
+
+    action: int
+    actions: int
+    level: int
+    direction: str
+    drive_v: float
+    body: str
+    prompt: str = ""
+
+
+class Walker:
+    """Begins each action, waits for its end, goes on to the next."""
+
+    def __init__(
+        self, rig: RigDescription, course: Sequence[ac.Action], channels: ChannelTable, tick_hz: int
+    ) -> None:
+        self._rig = rig
+        self._course = tuple(course)
+        self._tick_hz = tick_hz
+        self._body = channels.measuring("body angle")
+        self._load = channels.measuring("vertical load")
+        self._channels = channels
+        self._at = 0
+        self._begun: int | None = None  # tick at which the present action began
+        self._tick = 0
+        self.enabled = False
+        self._level: ac.BeginLevel | None = None
+        self._state = ""
+        self._mean_rad = math.nan
+        self._settled_tick = -1
+        self._half_width: float | None = None
+        self._was_held = False
+        self._lost_in_row = 0
+        self._ended: set[int] = set()
+        self._tries = 0
+        self._taps = 0
+        self._strike_from: int | None = None  # of the tap now observed
+        self._sign = 1.0
+        self._sums = np.zeros(2)
+        self._count = 0
+        self._acknowledged = False
+        self._asked_tick: int | None = None  # an interval ended; its verdict has not come yet
+
+    @property
+    def done(self) -> bool:
+        return self._at >= len(self._course)
+
+    @property
+    def standing(self) -> Standing:
+        action = None if self.done else self._course[self._at]
+        prompt = action.text if isinstance(action, ac.Ask) else ""
+        level = self._level
+        return Standing(
+            self._at,
+            len(self._course),
+            level.level if level else -1,
+            level.direction if level else "",
+            level.drive_v if level else 0.0,
+            self._state,
+            prompt,
+        )
+
+    def advance(
+        self,
+        block: RowBlock,
+        tick: int,
+        flap_hz: float,
+        verdicts: Sequence[Verdict],
+        operator: Sequence[Input],
+    ) -> list[cm.Command]:
+        """Commands after one frame."""
+        self._tick = tick
+        self._listen(verdicts)
+        made: list[cm.Command] = []
+        for one in operator:
+            if one.kind == "acknowledge":
+                self._acknowledged = True
+            elif one.kind == "redo":
+                made.extend(self._redo(one.reason))
+        # Several actions may end and begin at one tick: an event, then a ramp.
+        while not self.done:
+            if self._asked_tick is not None:
+                # What comes next may rest on the verdict of the interval that has just ended.
+                if tick - self._asked_tick < VERDICT_S * self._tick_hz:
+                    break
+                self._asked_tick = None
+            action = self._course[self._at]
+            if action.staircase in self._ended:
+                if isinstance(action, ac.EndLevel) and self._level is not None:
+                    made.append(self._note("level_end", level=action.level))
+                    self._level = None
+                self._next()
+                continue
+            if self._begun is None:
+                self._begun = tick
+                made.extend(self._begin(action))
+            finished, more = self._finish(action, block, flap_hz)
+            made.extend(more)
+            if not finished:
+                break
+            self._next()
+        return made
+
+    # -- what is known of the body ---------------------------------------------------------------------
+
+    def _listen(self, verdicts: Sequence[Verdict]) -> None:
+        for verdict in verdicts:
+            if isinstance(verdict, Condition):
+                self._state = verdict.state
+                self._mean_rad = verdict.mean_angle_rad
+                if verdict.settled:
+                    self._settled_tick = verdict.tick
+            elif isinstance(verdict, LevelVerdict):
+                if verdict.state:
+                    self._state = verdict.state
+                self._half_width = verdict.decay_half_width_per_s
+                self._asked_tick = None
+            elif isinstance(verdict, TapVerdict) and verdict.returned:
+                self._state = "held"
+
+    @property
+    def _waited_s(self) -> float:
+        return (self._tick - (self._begun or 0)) / self._tick_hz
+
+    def _next(self) -> None:
+        self._at += 1
+        self._begun = None
+        self._strike_from = None
+
+    def _note(self, kind: str, **data: Any) -> cm.Record:
+        return cm.Record(kind, data)
+
+    # -- beginning -------------------------------------------------------------------------------------
+
+    def _begin(self, action: ac.Action) -> list[cm.Command]:
+        level = self._level.level if self._level else -1
+        match action:
+            case ac.GoTo():
+                made: list[cm.Command] = []
+                if not self.enabled:
+                    self.enabled = True
+                    made.append(cm.Enable("armed", {}))
+                data = {"target_v": action.to_v, "slew_v_per_s": action.slew_v_per_s}
+                made.append(cm.Drive("drive", data, action.to_v, action.slew_v_per_s))
+                return made
+            case ac.BeginLevel():
+                self._level = action
+                self._half_width = None
+                self._tries = 0
+                return [
+                    self._note(
+                        "level",
+                        level=action.level,
+                        direction=action.direction,
+                        drive_v=action.drive_v,
+                        role=action.role,
+                    )
+                ]
+            case ac.EndLevel():
+                return self._end_level(action)
+            case ac.Watch():
+                return [cm.LockDrive(action.kind, {"level": level})]
+            case ac.Strike():
+                return self._begin_strike(action)
+            case ac.StrikeUntilPrecise():
+                return self._strike(action, self._sign * action.impulse_n_m_s)
+            case ac.LetGo():
+                number = self._taps
+                self._taps += 1
+                data = {"tap": number, "level": level, "angle_rad": action.angle_rad}
+                return [cm.LockDrive(), cm.ReleaseBody("release", data, action.angle_rad)]
+            case ac.ReadZero():
+                self._sums[:] = 0.0
+                self._count = 0
+            case ac.Ask():
+                self._acknowledged = False
+                return [cm.PromptOperator("prompt", {"text": action.text}, action.text)]
+            case ac.Note():
+                return [cm.Record(action.kind, dict(action.data))]
+            case ac.Pulse():
+                return [cm.SyncPulse("sync", {})]
+        return []
+
+    def _begin_strike(self, action: ac.Strike) -> list[cm.Command]:
+        impulse = action.impulse_n_m_s
+        if action.planned and self._state not in HELD:
+            if not self._worth_trying:
+                return []
+            self._tries += 1
+            middle = 0.5 * (self._rig.stops.low_rad + self._rig.stops.high_rad)
+            impulse = math.copysign(impulse, middle - self._mean_rad)
+        return self._strike(action, impulse)
+
+    @property
+    def _worth_trying(self) -> bool:
+        """Whether a tap on a body that is not held could capture it."""
+        rising = self._level is not None and self._level.direction == "rising"
+        return rising and self._state in ("at_stop", "lost") and self._tries < CAPTURE_TRIES
+
+    def _strike(self, action: ac.Strike | ac.StrikeUntilPrecise, impulse: float) -> list[cm.Command]:
+        self._strike_from = self._tick
+        self._sign = -self._sign
+        number = self._taps
+        self._taps += 1
+        data: dict[str, Any] = {"tap": number, "level": self._level.level if self._level else -1}
+        made: list[cm.Command] = [cm.LockDrive()]
+        if action.by == "hand":
+            # What a hand gives is measured; the plan only says which way.
+            way = "upward" if impulse > 0.0 else "downward"
+            text = f"tap now, {way}, gently, with the rod"
+            made.append(cm.PromptOperator("prompt", {"text": text}, text))
+            made.append(cm.Record("tap", {**data, "impulse_n_m_s": None, "by": "hand"}))
+        else:
+            made.append(cm.TapBody("tap", {**data, "impulse_n_m_s": impulse, "by": action.by}, impulse))
+        return made
+
+    def _redo(self, reason: str) -> list[cm.Command]:
+        """Exclude the last tap and give it again, if it is still being observed or was just before."""
+        if not self._taps:
+            return []
+        made: list[cm.Command] = []
+        action = None if self.done else self._course[self._at]
+        excluded = {"tap": self._taps - 1, "reason": reason or "the operator asked for it again"}
+        if isinstance(action, ac.Strike) and self._strike_from is not None:
+            made.append(self._tap_end())
+            self._begun = None
+            self._strike_from = None
+        made.append(cm.Record("tap_excluded", excluded))
+        return made
+
+    # -- ending ----------------------------------------------------------------------------------------
+
+    def _finish(self, action: ac.Action, block: RowBlock, flap_hz: float) -> tuple[bool, list[cm.Command]]:
+        level = self._level.level if self._level else -1
+        match action:
+            case ac.GoTo():
+                # The board says when its register has arrived; the first frame after the command may not yet.
+                arrived = self._tick > (self._begun or 0) and not block.status & Status.RAMPING
+                return arrived, []
+            case ac.Wait():
+                return self._waited_s >= action.for_s, []
+            case ac.Settle():
+                settled = self._settled_tick >= (self._begun or 0) + int(action.least_s * self._tick_hz)
+                if settled or self._waited_s >= action.most_s:
+                    waited = round(self._waited_s, 3)
+                    return True, [self._note("settled", level=level, settled=settled, waited_s=waited)]
+                return False, []
+            case ac.Watch():
+                if self._waited_s >= action.for_s:
+                    return True, [self._interval_end(f"{action.kind}_end", level=level)]
+                return False, []
+            case ac.Strike():
+                if self._strike_from is None:
+                    return True, []  # skipped
+                return self._struck(action.observe_s)
+            case ac.StrikeUntilPrecise():
+                return self._until_precise(action)
+            case ac.LetGo():
+                if self._waited_s >= action.observe_s:
+                    return True, [self._interval_end("release_end", tap=self._taps - 1, level=level)]
+                return False, []
+            case ac.ReadZero():
+                return self._read_zero(action, block, flap_hz)
+            case ac.Ask():
+                if self._acknowledged or self._waited_s >= action.most_s:
+                    data = {"text": action.text, "waited_s": round(self._waited_s, 3)}
+                    return True, [cm.Record("acknowledged", {**data, "in_time": self._acknowledged})]
+                return False, []
+        return True, []
+
+    def _tap_end(self) -> cm.UnlockDrive:
+        level = self._level.level if self._level else -1
+        return self._interval_end("tap_end", tap=self._taps - 1, level=level)
+
+    def _interval_end(self, kind: str, **data: Any) -> cm.UnlockDrive:
+        if self._level is not None:
+            self._asked_tick = self._tick
+        return cm.UnlockDrive(kind, data)
+
+    def _struck(self, observe_s: float) -> tuple[bool, list[cm.Command]]:
+        since_s = (self._tick - (self._strike_from or 0)) / self._tick_hz
+        return (True, [self._tap_end()]) if since_s >= observe_s else (False, [])
+
+    def _until_precise(self, action: ac.StrikeUntilPrecise) -> tuple[bool, list[cm.Command]]:
+        if self._strike_from is None:  # between taps: the verdict on the last one has come
+            known = self._half_width is not None and self._half_width <= action.precision_per_s
+            if known or self._state not in HELD or self._waited_s >= action.most_s:
+                return True, []
+            return False, self._strike(action, self._sign * action.impulse_n_m_s)
+        finished, made = self._struck(action.observe_s)
+        if finished:
+            self._strike_from = None
+        return False, made
+
+    def _read_zero(
+        self, action: ac.ReadZero, block: RowBlock, flap_hz: float
+    ) -> tuple[bool, list[cm.Command]]:
+        if flap_hz >= self._rig.limits.standstill_hz:
+            self._begun = self._tick  # wait for standstill first
+            return False, []
+        columns = [column for column in (self._body, self._load) if column is not None]
+        for place, column in enumerate(columns):
+            self._sums[place] += float(self._channels[column].values(block.raw[:, column]).sum())
+        self._count += len(block)
+        if self._waited_s < action.for_s:
+            return False, []
+        means = self._sums / max(self._count, 1)
+        data: dict[str, Any] = {"body_rad": float(means[0])}
+        if self._load is not None:
+            data["load_n"] = float(means[1])
+        return True, [cm.Record("zero", data)]
+
+    def _end_level(self, action: ac.EndLevel) -> list[cm.Command]:
+        level = self._level
+        self._level = None
+        if level is not None and level.stop_after_lost:
+            if self._state in HELD:
+                self._was_held = True
+                self._lost_in_row = 0
+            elif self._was_held or level.direction == "falling":
+                self._lost_in_row += 1
+            if self._lost_in_row >= level.stop_after_lost:
+                self._ended.add(level.staircase)
+                self._lost_in_row = 0
+        return [self._note("level_end", level=action.level)]

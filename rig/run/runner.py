@@ -1,0 +1,175 @@
+"""The runner: what to do next, from rows, verdicts and the operator. Pure: no bench, no clock, no file.
+
+    state      leaves when                                              to
+    ---------  -------------------------------------------------------  ---------
+    ready      the first rows have come                                 running
+    running    the last action is done                                  stopping
+    running    an interlock trips, or the operator halts                stopping
+    stopping   the drive register is down, or enable is off             turning
+    turning    the crank has stood still for half a second              finished
+    turning    it has not after TURNING_AT_MOST_S                       finished (and says so)
+    finished   never
+
+A trip while stopping replaces a gentler halt by its own. What the runner does depends on ticks, rows and
+verdicts only, so the same session gives the same commands again.
+
+Taps of a staircase's plan are skipped where they could teach nothing: on a body thrown from stop to stop, and
+on a body lost from the held state while falling. On a body that lies on an end stop while rising, the first
+CAPTURE_TRIES taps are given away from that stop, as attempts at capture.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from drivers.channels import ChannelTable
+from drivers.contract import Halt
+from drivers.rows import RowBlock, Status
+from rig.description import RigDescription
+from rig.run import actions as ac
+from rig.run import commands as cm
+from rig.run.course import course
+from rig.run.interlocks import Trip
+from rig.run.progress import Standing, Walker
+from rig.steps import Protocol
+from rig.verdicts import Verdict
+
+READY, RUNNING, STOPPING, TURNING, FINISHED = "ready", "running", "stopping", "turning", "finished"
+STANDSTILL_S = 0.5
+TURNING_AT_MOST_S = 120.0
+DONE, HALTED = 0, 3
+
+
+@dataclass(frozen=True)
+class OperatorInput:
+    """What the operator did: "halt", "acknowledge" (a prompt) or "redo" (the last tap; `reason`)."""
+
+    kind: str
+    reason: str = ""
+
+
+class Runner:
+    """Walks through a protocol on one rig."""
+
+    def __init__(
+        self, rig: RigDescription, protocol: Protocol, channels: ChannelTable, tick_hz: int, by: str = ""
+    ) -> None:
+        self.rig = rig
+        self.state = READY
+        self.tick_hz = tick_hz
+        self._by = by
+        self._walker = Walker(rig, course(protocol, rig.limits.slew_v_per_s), channels, tick_hz)
+        self._exit = (DONE, "done")
+        self._stop_from = 0
+        self._still_from: int | None = None
+        self._off_tick = 0
+        self._locked_kind: tuple[str, dict[str, object]] | None = None
+
+    @property
+    def standing(self) -> Standing:
+        """Where the run stands, for progress and display."""
+        return self._walker.standing
+
+    @property
+    def finished(self) -> bool:
+        return self.state == FINISHED
+
+    def advance(
+        self,
+        block: RowBlock,
+        flap_hz: float,
+        verdicts: Sequence[Verdict] = (),
+        trips: Sequence[Trip] = (),
+        operator: Sequence[OperatorInput] = (),
+    ) -> list[cm.Command]:
+        """Commands after one frame of rows; `flap_hz` is the crank's present rate."""
+        tick = int(block.tick[-1])
+        if self.state == FINISHED:
+            return []
+        if trips and self.state in (READY, RUNNING, STOPPING):
+            return self._trip(tick, trips)
+        if any(one.kind == "halt" for one in operator) and self.state in (READY, RUNNING):
+            return self._halt(tick)
+        if self.state == READY:
+            self.state = RUNNING
+        if self.state == RUNNING:
+            made = self._walker.advance(block, tick, flap_hz, verdicts, operator)
+            if not self._walker.done:
+                return made
+            return made + self._end(tick)
+        if self.state == STOPPING:
+            return self._stopping(block, tick, flap_hz)
+        return self._turning(tick, flap_hz)
+
+    # -- ends ------------------------------------------------------------------------------------------
+
+    def _end(self, tick: int) -> list[cm.Command]:
+        """The protocol is through: down gently, then off."""
+        if not self._walker.enabled:
+            self.state = TURNING
+            self._off_tick = tick
+            return []
+        self.state = STOPPING
+        self._stop_from = tick
+        data = {"how": Halt.RAMP.value, "cause": "end of the protocol"}
+        return [cm.HaltDrive("halt", data, Halt.RAMP, self.rig.limits.slew_v_per_s)]
+
+    def _halt(self, tick: int) -> list[cm.Command]:
+        how = self.rig.halts.get("operator", Halt.COAST)
+        self._exit = (HALTED, "halted by the operator")
+        self.state = STOPPING
+        self._stop_from = tick
+        data = {"how": how.value, "cause": "operator"}
+        return [cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s)]
+
+    def _trip(self, tick: int, trips: Sequence[Trip]) -> list[cm.Command]:
+        made: list[cm.Command] = [cm.Record("trip", trip.to_json()) for trip in trips]
+        # The hardest halt any of them asks for: a coast takes the torque away at once.
+        how = next((h for h in (Halt.COAST, Halt.BRAKE) if any(t.halt is h for t in trips)), Halt.RAMP)
+        if self._exit[0] == DONE:
+            self._exit = (HALTED, trips[0].sentence)
+        self.state = STOPPING
+        self._stop_from = tick
+        data = {"how": how.value, "cause": trips[0].cause}
+        made.append(cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s))
+        return made
+
+    def _stopping(self, block: RowBlock, tick: int, flap_hz: float) -> list[cm.Command]:
+        enabled = bool(block.status & Status.ENABLED)
+        ramping = bool(block.status & Status.RAMPING)
+        if tick == self._stop_from or (enabled and ramping):
+            return []
+        self.state = TURNING
+        self._off_tick = tick
+        made: list[cm.Command] = []
+        if enabled:
+            made.append(cm.HaltDrive("", {}, Halt.COAST))
+        if flap_hz >= self.rig.limits.standstill_hz:
+            made.append(cm.Record("turning", {"flap_hz": round(flap_hz, 3)}))
+        return made
+
+    def _turning(self, tick: int, flap_hz: float) -> list[cm.Command]:
+        waited_s = (tick - self._off_tick) / self.tick_hz
+        if flap_hz >= self.rig.limits.standstill_hz:
+            self._still_from = None
+        elif self._still_from is None:
+            self._still_from = tick
+        code, reason = self._exit
+        if self._still_from is not None and tick - self._still_from >= STANDSTILL_S * self.tick_hz:
+            coast_s = (self._still_from - self._off_tick) / self.tick_hz
+            self.state = FINISHED
+            finished = cm.Finish("finished", {"exit_code": code, "reason": reason}, code, reason)
+            return [cm.Record("standstill", {"coast_s": round(coast_s, 3)}), finished]
+        if waited_s > TURNING_AT_MOST_S:
+            self.state = FINISHED
+            code = code or HALTED
+            reason = (
+                f"{reason}; the crank still turns at {flap_hz:.2f} Hz {math.floor(waited_s)} s after the halt"
+            )
+            return [cm.Finish("finished", {"exit_code": code, "reason": reason}, code, reason)]
+        return []
+
+
+__all__ = ["FINISHED", "READY", "RUNNING", "STOPPING", "TURNING", "OperatorInput", "Runner", "ac"]
