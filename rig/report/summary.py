@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from rig.report.rounding import NOT_KNOWN, bare, fixed, interval_text, measured_text, value_text
-from rig.report.wording import DIRECTION_SIGNS, KIND_WORDS, VERDICT_WORDS, sentence, words
+from rig.report.wording import DIRECTION_SIGNS, KIND_WORDS, VERDICT_WORDS, opening, sentence, words
 from rig.results import Boundary, Finding, Measured, SessionResult
 
 #: Names and units of the numbers a finding may carry.
@@ -69,8 +69,8 @@ def finding_line(question: str, finding: Finding) -> FindingLine:
     numbers = []
     for name, number in finding.numbers.items():
         told, unit = NUMBER_WORDS.get(name, (words(name), ""))
-        numbers.append((told, measured_text(number, unit)))
-    return FindingLine(question, sign, verdict, sentence(finding.reason), tuple(numbers))
+        numbers.append((opening(told), measured_text(number, unit)))
+    return FindingLine(question, sign, opening(verdict), sentence(finding.reason), tuple(numbers))
 
 
 def findings(result: SessionResult) -> tuple[FindingLine, ...]:

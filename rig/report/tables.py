@@ -10,7 +10,7 @@ import numpy as np
 from rig.events import Event
 from rig.report.rounding import NOT_KNOWN, bare, fixed, half_width_text, value_text
 from rig.report.timing import BoardClock
-from rig.report.wording import DIRECTION_SIGNS, REGIME_SIGNS, seconds, sentence, words
+from rig.report.wording import DIRECTION_SIGNS, REGIME_SIGNS, opening, seconds, sentence, words
 from rig.results import LevelResult, Measured, SessionResult, TapResult
 
 RAD_TO_DEG = 180.0 / np.pi
@@ -137,11 +137,11 @@ def _tap_row(tap: TapResult, clock: BoardClock, levels: Mapping[int, tuple[float
         impulse=EMPTY if tap.impulse_n_m_s is None else fixed(1e3 * tap.impulse_n_m_s, 3),
         kick=EMPTY if tap.kick_rad_per_s is None else fixed(RAD_TO_DEG * tap.kick_rad_per_s, 1),
         push=EMPTY if not push else "up" if push > 0.0 else "down",
-        outcome="returned" if tap.returned else "lost",
+        outcome="returned" if tap.returned else "no return",
         outcome_sign="●" if tap.returned else "✕",
         used="used" if tap.accepted else "left out",
         accepted=tap.accepted,
-        fitted=tap.start_s is not None,
+        fitted=tap.decay_per_s.value is not None,
         interval=window,
         decay=cell(tap.decay_per_s) if tap.decay_per_s.value is not None else Cell(EMPTY),
         mode=cell(tap.mode_hz) if tap.mode_hz.value is not None else Cell(EMPTY),
@@ -174,7 +174,7 @@ def excluded_lines(result: SessionResult) -> list[str]:
             continue
         rest = [f"{words(key)} {value}" for key, value in entry.items() if key != "reason"]
         what = ", ".join(rest) or "left out"
-        lines.append(f"{what.capitalize()}: {sentence(str(entry.get('reason') or 'reason ' + NOT_KNOWN))}")
+        lines.append(f"{opening(what)}: {sentence(str(entry.get('reason') or 'reason ' + NOT_KNOWN))}")
     return lines
 
 

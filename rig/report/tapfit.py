@@ -103,14 +103,14 @@ def shown_tap(
     tap_s = clock.seconds(tap.tick)
     first = min(tap_s, tap.start_s) - BEFORE_S
     rows = slice(*np.searchsorted(time, (first, min(tap.end_s + AFTER_S, until_s - 0.01))))
-    inside = slice(*np.searchsorted(time, (tap.start_s, tap.end_s)))
+    inside = _rows_between(time, tap.start_s, tap.end_s)
     if inside.stop - inside.start < 2:
         return None
     fitted = fit(time[inside], angle[inside], None if crank is None else crank[inside])
     variations = []
     for name, later_s, share in VARIATIONS:
         start = tap.start_s + later_s
-        part = slice(*np.searchsorted(time, (start, start + share * (tap.end_s - start))))
+        part = _rows_between(time, start, start + share * (tap.end_s - start))
         if part.stop - part.start >= 2:
             other = fit(time[part], angle[part], None if crank is None else crank[part])
             variations.append((name, _decay(other)))
@@ -118,6 +118,11 @@ def shown_tap(
         tap, place, time[rows], angle[rows], None if crank is None else crank[rows], tap_s, fitted,
         (("as shown", _decay(fitted)), *variations),
     )  # fmt: skip
+
+
+def _rows_between(time_s: Values, start_s: float, end_s: float) -> slice:
+    """Rows from start to end, both included."""
+    return slice(int(np.searchsorted(time_s, start_s)), int(np.searchsorted(time_s, end_s, side="right")))
 
 
 def _decay(fit: DecayFit) -> Measured:

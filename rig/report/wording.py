@@ -35,13 +35,15 @@ def words(term: str) -> str:
     return STATE_WORDS.get(term, term.replace("_", " "))
 
 
+def opening(text: str) -> str:
+    """Capital first letter, the rest as it is: units and names keep their case."""
+    return text[:1].upper() + text[1:]
+
+
 def sentence(text: str) -> str:
     """Capital first letter and a full stop."""
-    text = text.strip()
-    if not text:
-        return ""
-    text = text[0].upper() + text[1:]
-    return text if text[-1] in ".!?" else text + "."
+    text = opening(text.strip())
+    return text if not text or text[-1] in ".!?" else text + "."
 
 
 def seconds(time_s: float | None) -> str:
