@@ -10,7 +10,7 @@ import numpy as np
 from rig.description import RigDescription
 from rig.events import Event
 from rig.report import palette
-from rig.report.stability import end_stops
+from rig.report.marks import draw_end_stops
 from rig.report.timing import BoardClock
 from rig.report.trace import Streams, binned, channel, flap_course, zigzag
 from rig.results import SessionResult
@@ -57,7 +57,7 @@ def course_figure(
         stops = (rig.stops.low_rad * RAD_TO_DEG, rig.stops.high_rad * RAD_TO_DEG)
         reach = stops[1] - stops[0]
         body.set_ylim(stops[0] - 0.12 * reach, stops[1] + 0.12 * reach)
-        end_stops(body, stops)
+        draw_end_stops(body, stops)
         _taps(taps, result, clock)
         for axes in (drive, flap, taps, body):
             _levels(axes, events, clock, number=axes is drive)

@@ -11,7 +11,6 @@ import numpy as np
 from rig.description import RigDescription
 from rig.events import Event
 from rig.report import apparatus, doubts, methods, protection, summary, tables
-from rig.report.cautions import CAUTIONS
 from rig.report.course import course_figure
 from rig.report.curves import MapCurve, straight_fit
 from rig.report.provenance import Provenance
@@ -23,6 +22,7 @@ from rig.report.trace import Streams
 from rig.report.vector import inline_svg
 from rig.report.wording import duration
 from rig.results import Measured, SessionResult
+from rig.run.cautions import CAUTIONS
 from rig.steps import Protocol
 
 RAD_TO_DEG = 180.0 / np.pi
@@ -94,7 +94,7 @@ def render(
         not_known=NOT_KNOWN,
         length=duration(float(time[-1] - time[0])) if len(time) > 1 else NOT_KNOWN,
         rows=len(time),
-        cautions=provenance.cautions or CAUTIONS,
+        cautions=CAUTIONS,
         headline=summary.headline(result),
         cards=(
             summary.boundary_card("falling", result.falling),

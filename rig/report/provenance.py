@@ -18,4 +18,3 @@ class Provenance:
     pace: str = ""  # "real" or "fast"
     firmware: str = ""
     software: Mapping[str, str] = field(default_factory=dict)  # distribution -> version
-    cautions: tuple[str, ...] = ()  # as shown before arming; empty: the report's own list

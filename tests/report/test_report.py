@@ -127,7 +127,7 @@ def test_foreign_words_are_shown_as_text(tmp_path: Path, short_session: Invented
         rig=bad_rig,
         result=result,
         protocol=Protocol(nasty, nasty, (), text=nasty),
-        provenance=Provenance(session_name=nasty, cautions=(nasty,), software={nasty: nasty}),
+        provenance=Provenance(session_name=nasty, software={nasty: nasty}),
     )
     assert "<script" not in page
     assert "<img" not in page
