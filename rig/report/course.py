@@ -36,7 +36,7 @@ def course_figure(
 
     with rc_context(palette.FIGURE_STYLE):
         figure = Figure(figsize=(7.3, 5.6), layout="constrained")
-        drive, flap, taps, body = figure.subplots(4, 1, sharex=True, height_ratios=(1.0, 1.0, 0.22, 1.9))
+        drive, flap, taps, body = figure.subplots(4, 1, sharex=True, height_ratios=(1.0, 1.0, 0.3, 1.9))
         time = np.asarray(streams.time_s, dtype=np.float64)
         _drive(drive, rig, streams, events, clock, time)
         crank = channel(streams, rig, "crank angle")
@@ -61,7 +61,7 @@ def course_figure(
         _taps(taps, result, clock)
         for axes in (drive, flap, taps, body):
             _levels(axes, events, clock, number=axes is drive)
-            _trips(axes, events, clock)
+            _trips(axes, events, clock, named=axes is drive)
         return figure
 
 
@@ -123,21 +123,25 @@ def _taps(axes: Axes, result: SessionResult, clock: BoardClock) -> None:
     axes.set_ylim(-1.0, 1.0)
     axes.tick_params(left=False, labelleft=False, bottom=False)
     axes.spines[["left", "bottom"]].set_visible(False)
+    axes.axhline(0.0, color=palette.RULE, linewidth=0.6)
+    size = 4.2 if len(result.taps) < 100 else 2.6
     for tap in result.taps:
         push = tap.kick_rad_per_s if tap.kick_rad_per_s is not None else tap.impulse_n_m_s
         marker = "d" if push is None else "^" if push > 0.0 else "v"
         colour = palette.GREEN if tap.returned else palette.VERMILLION
         axes.plot(
-            [clock.seconds(tap.tick)], [0.0], marker=marker, markersize=4.2, linestyle="none", color=colour,
-            markerfacecolor=colour if tap.returned else palette.PAPER, markeredgewidth=0.9, zorder=4,
+            [clock.seconds(tap.tick)], [0.5 if tap.returned else -0.5], marker=marker, markersize=size,
+            linestyle="none", color=colour, markerfacecolor=colour if tap.returned else palette.PAPER,
+            markeredgewidth=0.2 * size, zorder=4,
         )  # fmt: skip
 
 
-def _trips(axes: Axes, events: Sequence[Event], clock: BoardClock) -> None:
+def _trips(axes: Axes, events: Sequence[Event], clock: BoardClock, *, named: bool) -> None:
     for event in events:
         if event.kind == "trip":
             axes.axvline(clock.seconds(event.tick), color=palette.VERMILLION, linewidth=1.2, zorder=3)
-            axes.text(
-                clock.seconds(event.tick), 0.96, " trip", transform=axes.get_xaxis_transform(), va="top",
-                fontsize=6.8, color=palette.VERMILLION,
-            )  # fmt: skip
+            if named:
+                axes.text(
+                    clock.seconds(event.tick), 0.96, " trip", transform=axes.get_xaxis_transform(), va="top",
+                    fontsize=6.8, color=palette.VERMILLION,
+                )  # fmt: skip

@@ -95,6 +95,10 @@ def _stiffness_panel(
     draw_levels(axes, result.levels, lambda level: level.stiffness_per_s2, square=True)
     kappas = _ends(level.stiffness_per_s2 for level in result.levels)
     low, high = (min(0.0, *kappas), max(0.0, *kappas)) if kappas else (-20.0, 100.0)
+    if not kappas:
+        axes.text(
+            0.5, 0.5, "no level showed a slow mode", transform=axes.transAxes, ha="center", color=palette.INK
+        )
     room = 0.1 * (high - low) or 1.0
     axes.set_ylim(low - 1.6 * room, high + room)
     axes.set_xlim(span[0] ** 2, span[1] ** 2)
