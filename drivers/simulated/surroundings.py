@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping
 
 from analysis.mechanism import equations as eq
+from analysis.mechanism.ambient import noise_density_for_rms
 from analysis.mechanism.disturbance import Disturbance
 from analysis.mechanism.parameters import Carriage, Mechanism
 from analysis.mechanism.plant import Plant
@@ -22,8 +23,6 @@ def disturbance_of(
     """Random torque, sticking, play and the load cell's resonance in the plant's own terms."""
     density = world.body_torque_noise_n_m_per_rt_hz
     if density is None:
-        from analysis.mechanism.ambient import noise_density_for_rms
-
         rms_rad = world.body_torque_rms_rad
         density = noise_density_for_rms(mechanism, rms_rad) if rms_rad > 0.0 else 0.0
     column = channels.measuring("vertical load")
