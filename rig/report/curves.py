@@ -30,7 +30,7 @@ def straight_fit(result: SessionResult) -> MapCurve | None:
     """The straight line of slow stiffness on flap rate squared that the vibration verdict rests on.
 
     None where the verdict gives no slope. Without an intercept among its numbers the line is laid through
-    the weighted centroid of the held levels, where every least-squares line passes.
+    the median of the held levels.
     """
     slope = result.vibration.numbers.get("slope")
     if slope is None or slope.value is None:
@@ -43,11 +43,9 @@ def straight_fit(result: SessionResult) -> MapCurve | None:
     if intercept is not None and intercept.value is not None:
         start = intercept.value
     else:
-        stds = np.array([level.stiffness_per_s2.std or np.nan for level in levels])
-        weights = np.where(np.isfinite(stds) & (stds > 0.0), 1.0 / stds**2, 0.0)
-        weights = weights if weights.any() else np.ones(len(levels))
+        # Levels near the edge lie below the line, for there the body leans away: a median passes them by.
         kappa = np.array([float(level.stiffness_per_s2.value or 0.0) for level in levels])
-        start = float(np.average(kappa - slope.value * squares, weights=weights))
+        start = float(np.median(kappa - slope.value * squares))
     flap = np.sqrt(np.linspace(squares.min(), squares.max(), 40))
     return MapCurve("straight line through the levels", flap, start + slope.value * flap**2)
 

@@ -17,6 +17,7 @@ from rig.report.provenance import Provenance
 from rig.report.rounding import NOT_KNOWN, bare, half_width_text, measured_text, value_text
 from rig.report.stability import map_figure
 from rig.report.tapfit import Fit, ShownTap, plain_fit, representative_taps, shown_tap, tap_figure
+from rig.report.theory import averaged_curve
 from rig.report.timing import BoardClock
 from rig.report.trace import Streams
 from rig.report.vector import inline_svg
@@ -44,7 +45,7 @@ def write_report(
     """Write the report of one session to `path`: one HTML file, readable without network, printable on A4.
 
     streams: the board's stream (time_s in s, channels in SI units by the rig's names). theory, fit: curves
-    for the stability map; without `fit` the straight line of the vibration verdict is drawn. fit_tap: how a
+    for the stability map, else the averaged body and the straight line of the vibration verdict. fit_tap: how a
     tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError.
     """
     page = render(
@@ -76,6 +77,7 @@ def render(
     clock = BoardClock.of(rig, streams)
     levels = tables.visited_levels(events)
     stops = (rig.stops.low_rad * RAD_TO_DEG, rig.stops.high_rad * RAD_TO_DEG)
+    theory = theory or averaged_curve(rig, result)
     chart = map_figure(result, theory, fit=fit or straight_fit(result), stops_deg=stops)
     shown = _shown_taps(rig, result, streams, events, clock, levels, fit_tap)
     environment = Environment(
