@@ -45,8 +45,8 @@ def write_report(
     """Write the report of one session to `path`: one HTML file, readable without network, printable on A4.
 
     streams: the board's stream (time_s in s, channels in SI units by the rig's names). theory, fit: curves
-    for the stability map, else the averaged body and the straight line of the vibration verdict. fit_tap: how a
-    tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError.
+    for the stability map, else the averaged body and the straight line of the vibration verdict. fit_tap: how
+    a tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError.
     """
     page = render(
         rig=rig, protocol=protocol, result=result, streams=streams, events=events,
