@@ -196,9 +196,7 @@ class Analyst:
         return pools
 
     def _keyed(self, levels: list[LevelResult]) -> list[tuple[LevelResult, Key, LevelDecay | None]]:
-        return [
-            (level, key, self._fits.get(key)) for level, key in zip(levels, self._pools(), strict=True)
-        ]
+        return [(level, key, self._fits.get(key)) for level, key in zip(levels, self._pools(), strict=True)]
 
     def _close_visits(self) -> list[Verdict]:
         told: list[Verdict] = []

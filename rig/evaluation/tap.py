@@ -23,6 +23,8 @@ BEFORE_S = 1.0
 CLEAR_S = 0.035
 #: A step of angular rate below this many of its standard uncertainties was not a tap.
 SEEN_STD = 4.0
+#: A second hit leaves the start of the residual this many times larger than its end.
+DISTURBED = 2.0
 
 
 @dataclass(frozen=True)
@@ -131,11 +133,21 @@ def _verdict(
         return came, False
     if not seen:
         return "no tap was seen at its time", False
-    if hits > 1:
+    if hits > 1 and _disturbed(fit):
         return f"struck {hits} times", False
     if fit.status not in ("ok", "overdamped"):
         return fit.reason or fit.status.replace("_", " "), False
     return came, True
+
+
+def _disturbed(fit: DecayFit) -> bool:
+    """Whether the beginning of the record fits worse than its end: a second hit, and not just the bend of a
+    fast swing, which the onset detector cannot tell from one."""
+    part = max(len(fit.residual_rad) // 8, 20)
+    if len(fit.residual_rad) < 3 * part:
+        return True
+    early, late = fit.residual_rad[:part], fit.residual_rad[-2 * part :]
+    return float(early.std()) > DISTURBED * float(late.std())
 
 
 def _told(store: RowStore, visit: TapVisit, returned: bool, accepted: bool, reason: str) -> TapAnalysis:

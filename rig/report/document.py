@@ -21,7 +21,7 @@ from rig.report.theory import averaged_curve
 from rig.report.timing import BoardClock
 from rig.report.trace import Streams
 from rig.report.vector import inline_svg
-from rig.report.wording import duration
+from rig.report.wording import duration, sentence
 from rig.results import Measured, SessionResult
 from rig.run.cautions import CAUTIONS
 from rig.steps import Protocol
@@ -176,5 +176,5 @@ def _tap_view(shown: ShownTap, levels: dict[int, tuple[float, str]], number: int
         "stiffness": measured_text(tap.stiffness_per_s2, "1/s²"),
         "residual": f"{bare(RAD_TO_DEG * shown.fit.residual_rms_rad, 2)} deg",
         "variations": [(name, _brief(decay)) for name, decay in shown.variations],
-        "reason": tap.reason,
+        "reason": sentence(tap.reason),
     }

@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterable
 from typing import TYPE_CHECKING, Any
 
 from rig.report import palette
-from rig.results import LevelResult, Measured, SessionResult
+from rig.results import Boundary, LevelResult, Measured, SessionResult
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -18,6 +18,7 @@ THEORY_LINE: dict[str, Any] = {
     "zorder": 2.5,
 }
 FIT_LINE: dict[str, Any] = {"color": palette.FIT_COLOUR, "linestyle": "-", "linewidth": 1.3, "zorder": 2.4}
+BOUNDARY_LINE: dict[str, Any] = {"falling": (0, (6, 1.5, 1, 1.5)), "rising": (0, (1.2, 1.6))}
 
 
 def draw_levels(
@@ -80,68 +81,47 @@ def draw_boundaries(axes: Axes, result: SessionResult, *, square: bool) -> None:
                 rate.low**power, rate.high**power, color=colour, alpha=0.16, linewidth=0.0, zorder=0.5
             )
         axes.axvline(
-            rate.value**power, color=colour, linewidth=1.0, linestyle=_BOUNDARY_LINE[direction], zorder=1.2
+            rate.value**power, color=colour, linewidth=1.0, linestyle=BOUNDARY_LINE[direction], zorder=1.2
         )
-
-
-_BOUNDARY_LINE: dict[str, Any] = {"falling": (0, (6, 1.5, 1, 1.5)), "rising": (0, (1.2, 1.6))}
 
 
 def draw_end_stops(axes: Axes, stops_deg: tuple[float, float]) -> None:
     """Hatch what lies beyond the end stops (deg), as on a drawing."""
     bottom, top = axes.get_ylim()
-    for edge, end, name, side in (
-        (stops_deg[0], bottom, "lower stop", "bottom"),
-        (stops_deg[1], top, "upper stop", "top"),
-    ):
+    for edge, end, name in ((stops_deg[0], bottom, "lower stop"), (stops_deg[1], top, "upper stop")):
         axes.axhspan(
             edge, end, facecolor="none", edgecolor=palette.FAINT, hatch="////", linewidth=0.0, zorder=0.6
         )
         axes.axhline(edge, color=palette.FAINT, linewidth=0.8, zorder=0.7)
         axes.text(
-            0.985, edge, name, transform=axes.get_yaxis_transform(), ha="right",
-            va="bottom" if side == "bottom" else "top", fontsize=6.8, color=palette.INK,
+            0.985, 0.5 * (edge + end), name, transform=axes.get_yaxis_transform(), ha="right", va="center",
+            fontsize=6.8, color=palette.INK, bbox={"facecolor": palette.PAPER, "linewidth": 0.0, "pad": 1.2},
         )  # fmt: skip
     axes.set_ylim(bottom, top)
 
 
-def legend_entries(axes: Axes) -> tuple[list[Any], list[str]]:
+def legend_entries(axes: Axes, result: SessionResult) -> tuple[list[Any], list[str]]:
     from matplotlib.lines import Line2D
     from matplotlib.patches import Patch
 
-    blue, red = palette.DIRECTION_COLOUR["falling"], palette.DIRECTION_COLOUR["rising"]
-    entries: list[tuple[Any, str]] = [
-        (
-            Line2D([], [], marker="v", color=blue, markersize=5.8, linewidth=1.0),
-            "falling level, 95 % interval",
-        ),
-        (Line2D([], [], marker="^", color=red, markersize=5.8, linewidth=1.0), "rising level, 95 % interval"),
-        (
-            Line2D(
-                [],
-                [],
-                marker="v",
-                color=palette.INK,
-                markerfacecolor=palette.PAPER,
-                markersize=5.8,
-                linestyle="",
-            ),
-            "hollow: undetermined;  ✕: unstable or not held",
-        ),
-        (
-            (
-                Patch(color=blue, alpha=0.16, linewidth=0.0),
-                Line2D([], [], color=blue, linestyle=_BOUNDARY_LINE["falling"]),
-            ),
-            "boundary falling, 95 % band",
-        ),
-        (
-            (
-                Patch(color=red, alpha=0.16, linewidth=0.0),
-                Line2D([], [], color=red, linestyle=_BOUNDARY_LINE["rising"]),
-            ),
-            "boundary rising, 95 % band",
-        ),
-    ]
+    entries: list[tuple[Any, str]] = []
+    for direction, colour in palette.DIRECTION_COLOUR.items():
+        marker = palette.DIRECTION_MARKER[direction]
+        level = Line2D([], [], marker=marker, color=colour, markersize=5.8, linewidth=1.0)
+        entries.append((level, f"{direction} level, 95 % interval"))
+    hollow = Line2D(
+        [], [], marker="v", color=palette.INK, markerfacecolor=palette.PAPER, markersize=5.8, linestyle=""
+    )
+    entries.append((hollow, "hollow: undetermined;  ✕: unstable or not held"))
+    for direction, boundary in (("falling", result.falling), ("rising", result.rising)):
+        if located(boundary):
+            colour = palette.DIRECTION_COLOUR[direction]
+            band = Patch(color=colour, alpha=0.16, linewidth=0.0)
+            edge = Line2D([], [], color=colour, linestyle=BOUNDARY_LINE[direction])
+            entries.append(((band, edge), f"boundary {direction}, 95 % band"))
     entries += list(zip(*axes.get_legend_handles_labels(), strict=True))
     return [handle for handle, _ in entries], [label for _, label in entries]
+
+
+def located(boundary: Boundary) -> bool:
+    return boundary.kind != "not_located" and boundary.flap_hz.value is not None

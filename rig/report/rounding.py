@@ -16,6 +16,9 @@ NORMAL_95 = 1.959964
 SLIGHT = Decimal("0.01")
 #: Digits of a number that comes without any uncertainty.
 BARE_DIGITS = 4
+UNLIMITED = 99
+#: Sides of an interval that differ by less than this share are told as one half-width.
+NEARLY = 0.1
 
 
 def rounded_uncertainty(std: float) -> Decimal:
@@ -82,12 +85,14 @@ def std_of(measured: Measured) -> float | None:
     return None
 
 
-def value_text(measured: Measured) -> str:
-    """The value alone, rounded to its uncertainty; "not known" where there is none."""
+def value_text(measured: Measured, most_decimals: int = UNLIMITED) -> str:
+    """The value alone, rounded to its uncertainty but to no more than so many decimals; or "not known"."""
     if measured.value is None or not math.isfinite(measured.value):
         return NOT_KNOWN
     std = std_of(measured)
-    return bare(measured.value) if std is None else fixed(measured.value, decimals_for(std))
+    return (
+        bare(measured.value) if std is None else fixed(measured.value, min(decimals_for(std), most_decimals))
+    )
 
 
 def interval_text(measured: Measured) -> str:
@@ -108,14 +113,20 @@ def interval_text(measured: Measured) -> str:
     return f"below {upper}" if known(high) else ""
 
 
-def half_width_text(measured: Measured) -> str:
-    """The 95 % interval as "±0.0022" where its two sides round to the same, else as its limits."""
+def half_width_text(measured: Measured, most_decimals: int = UNLIMITED) -> str:
+    """The 95 % interval as "±0.0022", the wider side, where both sides nearly agree; else as its limits."""
     std, value, low, high = std_of(measured), measured.value, measured.low, measured.high
     if std is None or value is None or low is None or high is None or not math.isfinite(high - low):
         return interval_text(measured)
-    places = decimals_for(std)
-    below, above = fixed(value - low, places), fixed(high - value, places)
-    return f"±{above}" if below == above else interval_text(measured)
+    below, above = value - low, high - value
+    wide, narrow = max(below, above), min(below, above)
+    if narrow < (1.0 - NEARLY) * wide:
+        return interval_text(measured)
+    places = min(decimals_for(std), most_decimals)
+    # Rounded up: at few decimals a half-width must not vanish.
+    step = Decimal(1).scaleb(-places)
+    nearest = Decimal(repr(wide)).quantize(step, rounding=ROUND_HALF_EVEN)
+    return f"±{nearest if nearest else step:f}"
 
 
 def measured_text(measured: Measured, unit: str = "") -> str:

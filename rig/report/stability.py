@@ -57,7 +57,7 @@ def map_figure(
         _stiffness_panel(stiffness, result, theory, fit, span)
         _decay_panel(decay, result, theory, span)
         _angle_panel(angle, result, theory, span, stops_deg)
-        handles, labels = legend_entries(stiffness)
+        handles, labels = legend_entries(stiffness, result)
         figure.legend(
             handles, labels, loc="outside lower center", ncols=3, columnspacing=2.2, handlelength=2.2
         )

@@ -15,6 +15,8 @@ from rig.results import LevelResult, Measured, SessionResult, TapResult
 
 RAD_TO_DEG = 180.0 / np.pi
 EMPTY = "–"
+#: A column has room for so many; a flap rate known to a microhertz gains nothing by more.
+MOST_DECIMALS = 4
 
 
 @dataclass(frozen=True)
@@ -86,7 +88,7 @@ def level_rows(levels: Sequence[LevelResult]) -> list[LevelRow]:
 
 
 def cell(number: Measured) -> Cell:
-    return Cell(value_text(number), half_width_text(number))
+    return Cell(value_text(number, MOST_DECIMALS), half_width_text(number, MOST_DECIMALS))
 
 
 def _scaled(number: Measured, factor: float) -> Measured:

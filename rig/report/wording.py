@@ -42,7 +42,7 @@ def opening(text: str) -> str:
 
 def sentence(text: str) -> str:
     """Capital first letter and a full stop."""
-    text = opening(text.strip())
+    text = opening(text.strip().replace("+-", "±"))
     return text if not text or text[-1] in ".!?" else text + "."
 
 

@@ -27,7 +27,6 @@ from rig.run.runner import OperatorInput, Runner
 from rig.steps import Protocol as BenchProtocol
 from rig.verdicts import Verdict
 
-READ_WAIT_S = 0.05
 LINK_FAILED, HALTED = 4, 3
 
 
@@ -99,6 +98,8 @@ class Loop:
         start = rig.world.winding_start_deg_c if rig.world is not None and rig.simulated else None
         self.interlocks = Interlocks(rig, hello.channels, hello.tick_hz, start)
         self.runner = Runner(rig, protocol, hello.channels, hello.tick_hz)
+        # One frame a read: what a frame decides then takes effect before the next one, at every pace.
+        self._wait_s = hello.frame_rows * hello.row_period_ticks / hello.tick_hz
         self._tick = 0
         self._origin: int | None = None
         self._overruns: int | None = None
@@ -111,7 +112,7 @@ class Loop:
         fresh_s = self._clock.now_s()
         try:
             while self._outcome is None:
-                reading = self._bench.read(READ_WAIT_S)
+                reading = self._bench.read(self._wait_s)
                 now_s = self._clock.now_s()
                 if reading.blocks:
                     fresh_s = now_s

@@ -1,0 +1,1 @@
+"""Where a held state ends (falling) and begins (rising), from levels and taps."""
