@@ -94,6 +94,15 @@ def test_half_width_only_where_both_sides_agree() -> None:
     assert half_width_text(Measured.normal(1.5, 0.1)) == "±0.20"
     assert half_width_text(Measured(1.5, 0.1, 1.4, 1.9)) == interval_text(Measured(1.5, 0.1, 1.4, 1.9))
     assert half_width_text(Measured()) == ""
+    # Nearly symmetric: the wider side is told, so the half-width never claims more than the interval.
+    assert half_width_text(Measured(0.8623, 0.0044, 0.8537, 0.8710)) == "±0.0087"
+
+
+def test_a_column_caps_decimals_without_losing_the_uncertainty() -> None:
+    fine = Measured.normal(7.5000491, 0.000012)
+    assert value_text(fine, 4) == "7.5000"
+    assert half_width_text(fine, 4) == "±0.0001"
+    assert value_text(fine) == "7.500049"
 
 
 @pytest.mark.parametrize(
