@@ -155,6 +155,8 @@ class SessionResult:
     lost_frames: int = 0
     excluded: tuple[dict[str, Any], ...] = ()
     remarks: tuple[str, ...] = ()  # sentences for the report, e.g. "a larger tap is lost 4 % higher"
+    # The form fitted for the boundary, for the map: (flap rate Hz, stiffness 1/s^2, mean angle deg).
+    fit_curve: tuple[tuple[float, float, float], ...] = ()
 
     def to_json(self) -> dict[str, Any]:
         taps = []

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from analysis.boundary.form import FittedForm
 from rig.results import LevelResult, SessionResult
 
 Values = NDArray[np.float64]
@@ -24,6 +26,24 @@ class MapCurve:
     stiffness_per_s2: Values
     decay_per_s: Values | None = None
     mean_angle_deg: Values | None = None
+
+
+def form_points(form: FittedForm, top_hz: float, points: int = 60) -> tuple[tuple[float, float, float], ...]:
+    """A boundary's fitted form from its edge up to `top_hz`, as `SessionResult.fit_curve` keeps it."""
+    # Near the edge all goes with the square root of the distance: points crowd there.
+    flap = form.boundary_hz + (top_hz - form.boundary_hz) * np.linspace(0.0, 1.0, points) ** 2
+    degrees = 180.0 / np.pi
+    found = [(rate, form.stiffness_per_s2(rate), degrees * form.angle_rad(rate)) for rate in flap.tolist()]
+    # At the edge itself the rest is a double root, which rounding may take away.
+    return tuple(point for point in found if all(math.isfinite(number) for number in point))
+
+
+def fitted_curve(result: SessionResult) -> MapCurve | None:
+    """What was fitted to the levels: the boundary's form, else the straight line, else nothing."""
+    if len(result.fit_curve) > 1:
+        flap, stiffness, angle = np.array(result.fit_curve, dtype=np.float64).T
+        return MapCurve("fit: averaged form", flap, stiffness, None, angle)
+    return straight_fit(result)
 
 
 def straight_fit(result: SessionResult) -> MapCurve | None:

@@ -12,7 +12,7 @@ from rig.description import RigDescription
 from rig.events import Event
 from rig.report import apparatus, doubts, methods, protection, summary, tables
 from rig.report.course import course_figure
-from rig.report.curves import MapCurve, straight_fit
+from rig.report.curves import MapCurve, fitted_curve
 from rig.report.provenance import Provenance
 from rig.report.rounding import NOT_KNOWN, bare, half_width_text, measured_text, value_text
 from rig.report.stability import map_figure
@@ -45,7 +45,7 @@ def write_report(
     """Write the report of one session to `path`: one HTML file, readable without network, printable on A4.
 
     streams: the board's stream (time_s in s, channels in SI units by the rig's names). theory, fit: curves
-    for the stability map, else the averaged body and the straight line of the vibration verdict. fit_tap: how
+    for the stability map, else the averaged body and what the result holds. fit_tap: how
     a tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError.
     """
     page = render(
@@ -78,7 +78,7 @@ def render(
     levels = tables.visited_levels(events)
     stops = (rig.stops.low_rad * RAD_TO_DEG, rig.stops.high_rad * RAD_TO_DEG)
     theory = theory or averaged_curve(rig, result)
-    chart = map_figure(result, theory, fit=fit or straight_fit(result), stops_deg=stops)
+    chart = map_figure(result, theory, fit=fit or fitted_curve(result), stops_deg=stops)
     shown = _shown_taps(rig, result, streams, events, clock, levels, fit_tap)
     environment = Environment(
         loader=PackageLoader("rig.report", "."), autoescape=True, undefined=StrictUndefined, trim_blocks=True,

@@ -56,7 +56,7 @@ def map_figure(
         span = _flap_span(result, theory, fit)
         _stiffness_panel(stiffness, result, theory, fit, span)
         _decay_panel(decay, result, theory, span)
-        _angle_panel(angle, result, theory, span, stops_deg)
+        _angle_panel(angle, result, theory, fit, span, stops_deg)
         handles, labels = legend_entries(stiffness, result)
         figure.legend(
             handles, labels, loc="outside lower center", ncols=3, columnspacing=2.2, handlelength=2.2
@@ -125,6 +125,7 @@ def _angle_panel(
     axes: Axes,
     result: SessionResult,
     theory: MapCurve | None,
+    fit: MapCurve | None,
     span: tuple[float, float],
     stops_deg: tuple[float, float] | None,
 ) -> None:
@@ -132,8 +133,9 @@ def _angle_panel(
     axes.set_xlabel("flap rate  (Hz)")
     axes.set_ylabel("mean angle  (deg)")
     draw_boundaries(axes, result, square=False)
-    if theory is not None and theory.mean_angle_deg is not None:
-        axes.plot(theory.flap_hz, theory.mean_angle_deg, **THEORY_LINE)
+    for curve, style in ((fit, FIT_LINE), (theory, THEORY_LINE)):
+        if curve is not None and curve.mean_angle_deg is not None:
+            axes.plot(curve.flap_hz, curve.mean_angle_deg, **style)
     draw_levels(axes, result.levels, lambda level: level.mean_angle_deg, square=False)
     _span_of(
         axes, result.levels, lambda level: level.mean_angle_deg, include=stops_deg or (), fallback=(-5.0, 5.0)

@@ -7,7 +7,8 @@ import numpy as np
 import pytest
 from invented_session import Invented
 
-from rig.report import MapCurve, map_figure
+from analysis.boundary.form import FittedForm, RigConstants
+from rig.report import MapCurve, fitted_curve, form_points, map_figure
 from rig.report.course import level_spans
 from rig.report.curves import straight_fit
 from rig.report.palette import DIRECTION_COLOUR
@@ -69,6 +70,19 @@ def test_straight_fit_passes_through_levels_that_lie_on_a_line(short_session: In
     fit = straight_fit(replace(short_session.result, levels=levels, vibration=found))
     assert fit is not None
     np.testing.assert_allclose(fit.stiffness_per_s2, start + slope * fit.flap_hz**2, rtol=1e-9)
+
+
+def test_fitted_form_comes_before_the_straight_line(short_session: Invented) -> None:
+    # A pitchfork without bias in closed form: kappa = K (x - 1), x = (f / fc)^2, angle constant.
+    form = FittedForm(25.0, 0.0, 150.0, math.radians(2.0), 1.0, 0.5, RigConstants())
+    points = form_points(form, 40.0)
+    curve = fitted_curve(replace(short_session.result, fit_curve=points))
+    assert curve is not None and curve.mean_angle_deg is not None
+    assert 25.0 <= curve.flap_hz[0] < 25.01 and curve.flap_hz[-1] == 40.0
+    np.testing.assert_allclose(curve.stiffness_per_s2, 150.0 * ((curve.flap_hz / 25.0) ** 2 - 1.0), atol=1e-6)
+    np.testing.assert_allclose(curve.mean_angle_deg, 2.0, atol=1e-6)
+    drawn = map_figure(short_session.result, None, fit=curve).axes[2]
+    assert any(np.array_equal(line.get_xdata(), curve.flap_hz) for line in drawn.lines)
 
 
 def test_no_slope_no_fit(short_session: Invented) -> None:
