@@ -65,9 +65,6 @@ def build() -> argparse.ArgumentParser:
     analyse.add_argument("sessions", metavar="SESSION", nargs="+")
     analyse.add_argument("--json", action="store_true", help="results as JSON on stdout")
     analyse.add_argument("--rig", metavar="RIG", help="constants from this rig file instead of the session's")
-    analyse.add_argument(
-        "--control", metavar="SESSION", help="session of the clamped control, for the vibration verdict"
-    )
 
     report = made["report"]
     report.add_argument("session", metavar="SESSION")

@@ -15,7 +15,8 @@ from analysis.flap import mean_flap
 from drivers.channels import ChannelTable
 from drivers.rows import RowBlock
 from rig.description import RigDescription
-from rig.evaluation.conclusions import Evidence, conclude
+from rig.evaluation.conclusions import conclude
+from rig.evaluation.evidence import Evidence, Key
 from rig.evaluation.level import (
     VisitAnalysis,
     fit_visits,
@@ -35,8 +36,6 @@ from rig.verdicts import Condition, LevelVerdict, TapVerdict, Verdict
 GRID_S = 0.5  # how often the condition of crank and body is told
 CONDITION_S = 1.5  # over how long a window
 NORMAL_95 = 1.959964
-
-Key = tuple[str, float, str]
 
 
 class Analyst:
@@ -64,15 +63,14 @@ class Analyst:
         """Results of everything fed so far."""
         self._advance(None)
         self._close_visits()
-        levels = self.levels()
         return conclude(
             Evidence(
                 rig=self.rig,
                 store=self.store,
                 timeline=self.timeline,
-                visits=tuple(self.visits),
-                levels=tuple(levels),
-                fits={(level.direction, key[1], key[2]): fit for level, key, fit in self._keyed(levels)},
+                levels=tuple(self.levels()),
+                pools=self._pools(),
+                fits=self._fits,
             )
         )
 
@@ -194,9 +192,6 @@ class Analyst:
             if analysis.visit.settled_tick is not None or analysis.taps or analysis.quiet is not None:
                 pools.setdefault(self._key(analysis), []).append(analysis)
         return pools
-
-    def _keyed(self, levels: list[LevelResult]) -> list[tuple[LevelResult, Key, LevelDecay | None]]:
-        return [(level, key, self._fits.get(key)) for level, key in zip(levels, self._pools(), strict=True)]
 
     def _close_visits(self) -> list[Verdict]:
         told: list[Verdict] = []
