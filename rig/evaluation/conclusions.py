@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from typing import Any
 
+import numpy as np
+
 from analysis import friction as friction_analysis
 from analysis import passivity as passivity_analysis
 from analysis import vibration as vibration_analysis
@@ -44,7 +46,22 @@ def conclude(evidence: Evidence) -> SessionResult:
         lost_frames=evidence.store.lost_frames,
         excluded=excluded,
         remarks=tuple(_remarks(evidence, falling, points)),
+        fit_curve=_fit_curve(falling, points),
     )
+
+
+def _fit_curve(falling: BoundaryEstimate, points: list[LevelPoint]) -> tuple[tuple[float, float, float], ...]:
+    """The fitted form for the map: flap rate, stiffness, mean angle in deg, from the boundary up."""
+    form = falling.form
+    if form is None:
+        return ()
+    top = max(point.flap_hz for point in points)
+    curve = []
+    for flap in np.linspace(form.boundary_hz * 1.0001, top, 60):
+        values = (float(flap), form.stiffness_per_s2(float(flap)), math.degrees(form.angle_rad(float(flap))))
+        if all(math.isfinite(value) for value in values):
+            curve.append(values)
+    return tuple(curve)
 
 
 def _boundary(estimate: BoundaryEstimate) -> Boundary:
@@ -195,8 +212,8 @@ def _basin_remarks(evidence: Evidence, basin: Basin) -> list[str]:
         expected, certain = basin.survived_from(kick), basin.survived_from(kick, CERTAIN)
         if math.isfinite(expected) and math.isfinite(certain):
             remarks.append(
-                f"A tap of {1e3 * size:.3g} mN m s {way} is survived from {certain:.2f} Hz (certain, 0.7 rule), "
-                f"expected from {expected:.2f} Hz, {100.0 * (expected / fc - 1.0):.1f} % above the boundary; "
-                "below that the larger tap loses a body that a small one does not."
+                f"A tap of {1e3 * size:.3g} mN m s {way} is survived for certain from {certain:.2f} Hz, "
+                f"{100.0 * (certain / fc - 1.0):.1f} % above the boundary (0.7 rule), and lost below {expected:.2f} Hz "
+                "as a rule."
             )
     return remarks

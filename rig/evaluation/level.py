@@ -32,6 +32,7 @@ class VisitAnalysis:
     visit: LevelVisit
     taps: list[TapAnalysis] = field(default_factory=list)
     quiet: Window | None = None
+    quiet_settled: bool = False
     start_state: str = ""
     start_reason: str = ""
     end_state: str = ""
@@ -58,6 +59,7 @@ def look_at_quiet(analysis: VisitAnalysis, store: RowStore, rig: RigDescription)
     state = state_of(part, rig)
     if state is not None:
         analysis.start_state, analysis.start_reason = state.state, state.reason
+        analysis.quiet_settled = state.state == "held" and (state.settled or visit.settled)
 
 
 def look_at_end(analysis: VisitAnalysis, store: RowStore, rig: RigDescription) -> None:
@@ -95,7 +97,8 @@ def fit_visits(visits: Sequence[VisitAnalysis]) -> LevelDecay | None:
     records = [tap.record for visit in visits for tap in visit.good if tap.record is not None]
     if not records:
         return None
-    quiet = next((v.quiet for v in visits if v.quiet is not None and v.start_state == "held"), None)
+    # A record that still drifts or rings from the step before would be taken for ambient motion.
+    quiet = next((v.quiet for v in visits if v.quiet is not None and v.quiet_settled), None)
     return fit_level(records, None if quiet is None else quiet.record())
 
 

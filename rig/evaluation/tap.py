@@ -23,8 +23,9 @@ BEFORE_S = 1.0
 CLEAR_S = 0.035
 #: A step of angular rate below this many of its standard uncertainties was not a tap.
 SEEN_STD = 4.0
-#: A second hit leaves the start of the residual this many times larger than its end.
-DISTURBED = 2.0
+#: A second hit leaves a residual at the start of the fit of at least this share of the swing; the nonlinearity
+#: of a single swing leaves a few per cent.
+DISTURBED = 0.12
 
 
 @dataclass(frozen=True)
@@ -141,13 +142,10 @@ def _verdict(
 
 
 def _disturbed(fit: DecayFit) -> bool:
-    """Whether the beginning of the record fits worse than its end: a second hit, and not just the bend of a
-    fast swing, which the onset detector cannot tell from one."""
-    part = max(len(fit.residual_rad) // 8, 20)
-    if len(fit.residual_rad) < 3 * part:
-        return True
-    early, late = fit.residual_rad[:part], fit.residual_rad[-2 * part :]
-    return float(early.std()) > DISTURBED * float(late.std())
+    """Whether the start of the record fits badly: a second hit, and not just the bend of a fast swing, which
+    the onset detector cannot tell from one."""
+    early = fit.residual_rad[: max(len(fit.residual_rad) // 8, 20)]
+    return not math.isfinite(fit.amplitude_rad) or float(early.std()) > DISTURBED * fit.amplitude_rad
 
 
 def _told(store: RowStore, visit: TapVisit, returned: bool, accepted: bool, reason: str) -> TapAnalysis:

@@ -63,6 +63,7 @@ class Walker:
         self._tick = 0
         self.enabled = False
         self._level: ac.BeginLevel | None = None
+        self._from_v = 0.0  # where the drive stood before the present ramp
         self._state = ""
         self._mean_rad = math.nan
         self._settled_tick = -1
@@ -272,9 +273,13 @@ class Walker:
         level = self._level.level if self._level else -1
         match action:
             case ac.GoTo():
-                # The board says when its register has arrived; the first frame after the command may not yet.
-                arrived = self._tick > (self._begun or 0) and not block.status & Status.RAMPING
-                return arrived, []
+                # The board says when its register has arrived, but a frame on its way may not know of the ramp yet.
+                due_s = abs(action.to_v - self._from_v) / action.slew_v_per_s
+                arrived = self._waited_s >= 0.98 * due_s and not block.status & Status.RAMPING
+                if arrived and self._tick > (self._begun or 0):
+                    self._from_v = action.to_v
+                    return True, []
+                return False, []
             case ac.Wait():
                 return self._waited_s >= action.for_s, []
             case ac.Settle():

@@ -13,9 +13,9 @@
 A trip while stopping replaces a gentler halt by its own. What the runner does depends on ticks, rows and
 verdicts only, so the same session gives the same commands again.
 
-Taps of a staircase's plan are skipped where they could teach nothing: on a body thrown from stop to stop, and
-on a body lost from the held state while falling. On a body that lies on an end stop while rising, the first
-CAPTURE_TRIES taps are given away from that stop, as attempts at capture.
+Taps of a staircase's plan are skipped where they could teach nothing: on a body lost from the held state while
+falling, and on one thrown from stop to stop, which is tapped by the stops already. On a body that lies on an
+end stop while rising, the first CAPTURE_TRIES taps are given away from that stop, as attempts at capture.
 """
 
 from __future__ import annotations
