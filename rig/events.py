@@ -2,7 +2,7 @@
 
 kind            data
 --------------  -------------------------------------------------------------------------------
-run             rig, protocol, pace
+run             rig, protocol
 armed           by
 drive           target_v, slew_v_per_s
 level           level, direction ("rising"|"falling"), drive_v, role ("level"|"reference"|"step")

@@ -9,8 +9,9 @@ Only `rig.session` and `rig.record` know HDF5.
 
 from __future__ import annotations
 
+import itertools
 import json
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, Any
@@ -35,8 +36,9 @@ MOST_EXPANSION = 2000
 class Stream:
     """The rows of one sampler. Columns are read when asked for and kept."""
 
-    def __init__(self, group: h5py.Group, path: Path) -> None:
+    def __init__(self, group: h5py.Group, path: Path, losses: Sequence[tuple[int, ...]] = ()) -> None:
         self._group = group
+        self.losses = tuple(losses)  # tick of the row after, rows, frames, overruns
         self._cache: dict[str, NDArray[Any]] = {}
         self.tick_hz = int(group.attrs["tick_hz"])
         self.row_period_ticks = int(group.attrs["row_period_ticks"])
@@ -85,14 +87,32 @@ class Stream:
         return None if column is None else self[self.channels[column].name]
 
     def blocks(self, rows_per_block: int) -> Iterator[RowBlock]:
-        """The rows again as blocks, in order, for analysis and replay (losses are not repeated)."""
+        """The rows again as blocks, in order, for analysis and replay.
+
+        A block ends early where the status changes or rows were lost, so that what it says holds for all its
+        rows; the loss is told in the block after it.
+        """
         if rows_per_block < 1:
             raise ValueError("a block needs at least one row")
         tick, status = self.tick, self.status
+        if not len(tick):
+            return
         raw = np.column_stack([self.raw(channel.name) for channel in self.channels]).astype(np.int32)
-        for start in range(0, len(tick), rows_per_block):
-            part = slice(start, start + rows_per_block)
-            yield RowBlock(tick=tick[part], raw=raw[part], status=int(status[part][-1]))
+        lost = {when: (rows, frames) for when, rows, frames, _ in self.losses}
+        cuts = np.flatnonzero(np.diff(status)) + 1
+        gaps = np.flatnonzero(np.isin(tick, np.array(list(lost), dtype=np.uint64)))
+        edges = np.unique(np.concatenate(([0, len(tick)], cuts, gaps)))
+        for first, last in itertools.pairwise(edges):
+            for start in range(first, last, rows_per_block):
+                part = slice(start, min(start + rows_per_block, last))
+                rows, frames = lost.get(int(tick[start]), (0, 0))
+                yield RowBlock(
+                    tick=tick[part],
+                    raw=raw[part],
+                    status=int(status[start]),
+                    lost_rows=rows,
+                    lost_frames=frames,
+                )
 
     def _read(self, name: str) -> NDArray[Any]:
         if name not in self._cache:
@@ -108,8 +128,11 @@ class Session:
         self._file = file
         self.created_utc = str(file.attrs["created_utc"])
         self.software = str(file.attrs["software"])
+        columns = [file[f"losses/{name}"][:] for name in ("tick", "rows", "frames", "overruns")]
+        self.losses = [tuple(int(number) for number in row) for row in zip(*columns, strict=True)]
         self.streams: Mapping[str, Stream] = {
-            name: Stream(group, path) for name, group in file["streams"].items()
+            name: Stream(group, path, self.losses if name == "board" else ())
+            for name, group in file["streams"].items()
         }
         self.rig_text = _text(file, "rig")
         self.protocol_text = _text(file, "protocol")
@@ -123,8 +146,6 @@ class Session:
                 file["events/tick"][:], file["events/kind"][:], file["events/data"][:], strict=True
             )
         ]
-        columns = [file[f"losses/{name}"][:] for name in ("tick", "rows", "frames", "overruns")]
-        self.losses = [tuple(int(number) for number in row) for row in zip(*columns, strict=True)]
 
     @property
     def rig(self) -> RigDescription:

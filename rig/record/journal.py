@@ -57,8 +57,9 @@ def to_json(fields: dict[str, Any]) -> bytes:
 class JournalWriter:
     """Appends records to a new file. Records are written in batches and synced from a thread of their own.
 
-    Raises NameTaken if the file exists, JournalFailure when writing or syncing fails or when less than
-    `reserve_bytes` are left on the disk: then the run must end, and what was written stays good.
+    Raises NameTaken if the file exists, JournalFailure when there is less than `reserve_bytes` to begin with
+    and when writing or syncing fails: then nothing more is taken, and what was written stays good. Space that
+    runs low during the run shows in `free_bytes`, for the interlocks to end the run in time.
     """
 
     def __init__(
@@ -66,7 +67,12 @@ class JournalWriter:
     ) -> None:
         self.path = path
         self._disk = disk or OsDisk()
-        self._reserve = reserve_bytes
+        self._free = self._free_now()
+        if self._free < reserve_bytes:
+            raise JournalFailure(
+                f"only {self._free / 1e6:.0f} MB are left on the disk of {path}, less than the reserve of "
+                f"{reserve_bytes / 1e6:.0f} MB"
+            )
         try:
             flags = os.O_WRONLY | os.O_CREAT | os.O_EXCL | os.O_APPEND
             self._descriptor = os.open(path, flags, 0o644)
@@ -81,8 +87,8 @@ class JournalWriter:
         self._length = 0
         self._sequence = 0
         self._closed = False
+        self._failed = ""
         self._sync = PeriodicSync(self._disk, self._descriptor)
-        self._free = self._free_now()
         try:
             self._append(HEADER, to_json(header))
             self.flush()
@@ -116,25 +122,23 @@ class JournalWriter:
         """Hand everything to the operating system."""
         if not self._buffer:
             return
+        self._refuse_after_failure()
         data = bytes(self._buffer)
         self._buffer.clear()
-        if self._length // 2**20 != (self._length + len(data)) // 2**20 or self._length == 0:
-            self._free = self._free_now()
-            if self._free < self._reserve:
-                raise JournalFailure(
-                    f"only {self._free / 1e6:.0f} MB are left on the disk of {self.path}, less than the "
-                    f"reserve of {self._reserve / 1e6:.0f} MB"
-                )
         sent = 0
         while sent < len(data):
             try:
                 sent += self._disk.write(self._descriptor, data[sent:])
             except OSError as error:
-                raise JournalFailure(f"{self.path} cannot be written: {error.strerror or error}") from error
-        self._length += len(data)
+                self._failed = f"{self.path} cannot be written: {error.strerror or error}"
+                raise JournalFailure(self._failed) from error
+        if self._length // 2**20 != (self._length + sent) // 2**20:
+            self._free = self._free_now()
+        self._length += sent
         self._sync.wrote(self._length)
         if self._sync.failure is not None:
-            raise JournalFailure(f"{self.path} cannot be written: {self._sync.failure.strerror}")
+            self._failed = f"{self.path} cannot be written: {self._sync.failure.strerror}"
+            raise JournalFailure(self._failed) from self._sync.failure
 
     def close(self, ended: bool = True) -> None:
         """Write the end record (unless the run broke off), sync, and close; safe to call again."""
@@ -144,22 +148,32 @@ class JournalWriter:
             if ended:
                 self._append(END, b"{}")
                 self.flush()
+            elif not self._failed:
+                self.flush()
         finally:
             self._closed = True
             self._sync.stop()
             os.close(self._descriptor)
+        if ended and self._sync.failure is not None:
+            raise JournalFailure(f"{self.path} cannot be written: {self._sync.failure.strerror}")
 
     def _append(self, kind: int, payload: bytes) -> None:
         if self._closed:
             raise JournalFailure(f"{self.path} is closed")
+        self._refuse_after_failure()
         self._buffer += encode(kind, self._sequence, payload)
         self._sequence += 1
         if len(self._buffer) >= BATCH_BYTES:
             self.flush()
 
+    def _refuse_after_failure(self) -> None:
+        # A record after a torn one would never be read; pretending to take it would be a lie.
+        if self._failed:
+            raise JournalFailure(self._failed)
+
     def _free_now(self) -> int:
         try:
-            return self._disk.free_bytes(self.path.parent)
+            return self._disk.free_bytes(self.path.absolute().parent)
         except OSError:
             return 2**62  # a file system that cannot tell: the write itself will
 
@@ -201,7 +215,10 @@ class Journal:
         first = next(iter(self), None)
         if first is None or first.kind != HEADER:
             raise Damaged(f"{path}: the journal's header is damaged, nothing can be recovered")
-        self.header: dict[str, Any] = first.fields()
+        try:
+            self.header: dict[str, Any] = first.fields()
+        except ValueError:
+            raise Damaged(f"{path}: the journal's header is not readable, nothing can be recovered") from None
 
     def __iter__(self) -> Iterator[Record]:
         data, offset, sequence = self._data, len(MAGIC), 0

@@ -33,7 +33,7 @@ from drivers.channels import Channel, ChannelTable
 from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
 from rig.events import Event
 from rig.record import journal as jn
-from rig.record.durability import sync_folder
+from rig.record.durability import lock, sync_folder
 from rig.record.errors import Damaged, JournalFailure, NameTaken
 
 FORMAT = 1
@@ -75,7 +75,7 @@ def read_recording(path: Path) -> Recording:
     book = jn.Journal(path)
     try:
         channels = ChannelTable(tuple(Channel(**fields) for fields in book.header["channels"]))
-    except (KeyError, TypeError) as error:
+    except (KeyError, TypeError, ValueError) as error:
         raise Damaged(f"{path}: the journal's header has no readable channel table") from error
     recording = Recording(book.header, channels)
     sequence = FrameSequence()
@@ -99,9 +99,17 @@ def read_recording(path: Path) -> Recording:
                 recording.losses.append(loss)
             recording.blocks.append(block)
         elif record.kind == jn.EVENT:
-            recording.events.append(Event.from_json(record.fields()))
+            try:
+                recording.events.append(Event.from_json(record.fields()))
+            except (ValueError, KeyError, TypeError):
+                recording.damage = f"an event that is none (record {record.sequence})"
+                break
         elif record.kind == jn.RESULT:
-            fields = record.fields()
+            try:
+                fields = record.fields()
+            except ValueError:
+                recording.damage = f"a result that is none (record {record.sequence})"
+                break
             if fields.pop("which", "live") == "final":
                 recording.final = fields
             else:
@@ -114,21 +122,27 @@ def read_recording(path: Path) -> Recording:
 def seal(journal: Path, session: Path, *, keep_journal: bool = False) -> Recording:
     """Write the session file of a journal and read it back; returns what was sealed.
 
-    Raises NameTaken if `session` exists, Damaged if the journal has no readable header, JournalFailure if the
-    session cannot be written. Whatever happens, the journal stays until the session has been verified.
+    Raises NameTaken if `session` exists or the journal is in use, Damaged if the journal has no readable
+    header, JournalFailure if the session cannot be written. Whatever happens, the journal stays until the
+    session has been verified.
     """
     if session.exists():
         raise NameTaken(f"{session} is there already")
-    recording = read_recording(journal)
-    write_session(recording, session)
+    with journal.open("rb") as file:
+        if not lock(file.fileno()):
+            raise NameTaken(f"{journal} is still being written by a run, or sealed by another command")
+        recording = read_recording(journal)
+        write_session(recording, session)
     if not keep_journal:
         journal.unlink()
+        sync_folder(journal.absolute().parent)
     return recording
 
 
 def write_session(recording: Recording, session: Path) -> None:
     """Write, sync, compare, then name."""
-    aside = session.with_name(f".{session.name}.{os.getpid()}.part")
+    # One name for all attempts: what a killed one leaves behind is overwritten by the next.
+    aside = session.with_name(f".{session.name}.part")
     try:
         with h5py.File(aside, "w", libver=("earliest", "v110")) as file:
             _fill(file, recording)
@@ -139,7 +153,7 @@ def write_session(recording: Recording, session: Path) -> None:
             os.close(descriptor)
         _compare(aside, recording)
         _name(aside, session)
-        sync_folder(session.parent)
+        sync_folder(session.absolute().parent)
     except FileExistsError:
         raise NameTaken(f"{session} is there already") from None
     except (OSError, RuntimeError) as error:  # h5py tells a full disk as either
@@ -184,7 +198,7 @@ def _fill(file: h5py.File, recording: Recording) -> None:
     events = file.create_group("events")
     events["tick"] = np.array([event.tick for event in recording.events], dtype=np.uint64)
     _texts(events, "kind", [event.kind for event in recording.events])
-    _texts(events, "data", [json.dumps(event.data, default=str) for event in recording.events])
+    _texts(events, "data", [_event_text(event) for event in recording.events])
     losses = file.create_group("losses")
     for index, name in enumerate(("tick", "rows", "frames", "overruns")):
         losses[name] = np.array([loss[index] for loss in recording.losses], dtype=np.uint64)
@@ -210,15 +224,27 @@ def _texts(group: h5py.Group, name: str, texts: list[str]) -> None:
     group.create_dataset(name, shape=(len(texts),), data=np.array(texts, dtype=object), dtype=TEXT)
 
 
+def _event_text(event: Event) -> str:
+    return json.dumps(event.data, default=str)
+
+
 def _compare(path: Path, recording: Recording) -> None:
     """What stands in the file must be what was in the journal."""
     with h5py.File(path, "r") as file:
         board = file["streams/board"]
         raw = recording.raw
-        same = np.array_equal(board["tick"][:], recording.tick) and all(
-            np.array_equal(board[channel.name][:], raw[:, index])
-            for index, channel in enumerate(recording.channels)
+        same = (
+            np.array_equal(board["tick"][:], recording.tick)
+            and np.array_equal(board["status"][:], recording.status)
+            and all(
+                np.array_equal(board[channel.name][:], raw[:, index])
+                for index, channel in enumerate(recording.channels)
+            )
         )
-        kinds = [kind.decode() for kind in file["events/kind"][:]]
-        if not same or kinds != [event.kind for event in recording.events]:
+        names = ("tick", "kind", "data")
+        events = list(zip(*(file[f"events/{name}"][:] for name in names), strict=True))
+        wanted = [
+            (event.tick, event.kind.encode(), _event_text(event).encode()) for event in recording.events
+        ]
+        if not same or events != wanted:
             raise OSError(None, "what was read back differs from what was written")

@@ -76,7 +76,7 @@ class Interlocks:
         rig: RigDescription,
         channels: ChannelTable,
         tick_hz: int,
-        winding_start_deg_c: float | None = None,
+        winding: WindingModel | None = None,
     ) -> None:
         self._rig = rig
         self._channels = channels
@@ -88,9 +88,9 @@ class Interlocks:
         crank = self._column["crank angle"]
         counts = 2.0 * math.pi / abs(channels[crank].scale) if crank is not None else 1.0
         self.crank = TurnCounter(counts, tick_hz)
-        self.winding = (
-            WindingModel(rig.motor, rig.limits.winding_deg_c, winding_start_deg_c) if rig.motor else None
-        )
+        if winding is None and rig.motor is not None:
+            winding = WindingModel(rig.motor, rig.limits.winding_deg_c)
+        self.winding = winding
         self._latched: set[str] = set()
         self._origin: int | None = None
         self._last_tick: int | None = None
@@ -135,6 +135,8 @@ class Interlocks:
             load = self._largest(block, column)
             self._limit(trips, "load", "vertical load", load, limits.load_n, "N", tick)
         self._losses(trips, block, tick)
+        if block.status & Status.LATCHED:  # its notice may have been lost on the way
+            self._board(trips, _why(block.status), tick)
         self._last_tick = tick
         return trips
 
@@ -161,10 +163,11 @@ class Interlocks:
         """A latch the board set by itself is a trip, whatever made it do so."""
         trips: list[Trip] = []
         if notice.kind == "latch":
-            cause = str(notice.data.get("cause", "unknown"))
-            sentence = f"the board switched the drive off by itself ({cause})"
-            self._trip(trips, "board", sentence, 1.0, 0.0, notice.tick)
+            self._board(trips, str(notice.data.get("cause", "unknown")), notice.tick)
         return trips
+
+    def _board(self, trips: list[Trip], cause: str, tick: int) -> None:
+        self._trip(trips, "board", f"the board switched the drive off by itself ({cause})", 1.0, 0.0, tick)
 
     # -- single limits ---------------------------------------------------------------------------------
 
@@ -245,3 +248,16 @@ class Interlocks:
         at_s = (tick - (self._origin or 0)) / self._tick_hz
         full = f"{sentence} at {at_s:.3f} s; drive off ({halt.value}): {WHAT_NOW[cause]}."
         trips.append(Trip(cause, full[0].upper() + full[1:], value, limit, halt))
+
+
+def _why(status: int) -> str:
+    """The cause of a latch as far as the status bits tell it."""
+    causes = {
+        Status.STOP_PRESSED: "stop",
+        Status.GUARD_OPEN: "guard",
+        Status.STALL: "stall",
+        Status.WATCHDOG: "watchdog",
+        Status.BRIDGE_FAULT: "bridge",
+        Status.UNDERVOLTAGE: "undervoltage",
+    }
+    return next((cause for bit, cause in causes.items() if status & bit), "unknown")

@@ -21,9 +21,12 @@ from rig.description import RigDescription
 from rig.events import Event
 from rig.record.errors import JournalFailure
 from rig.run import commands as cm
+from rig.run.inputs import OperatorInput
 from rig.run.interlocks import Interlocks, Trip
+from rig.run.interrupt import HaltSignals
 from rig.run.progress import Standing
-from rig.run.runner import OperatorInput, Runner
+from rig.run.runner import Runner
+from rig.run.winding import WindingModel
 from rig.steps import Protocol as BenchProtocol
 from rig.verdicts import Verdict
 
@@ -86,6 +89,9 @@ class Loop:
         clock: Clock,
         progress: Progress | None = None,
         operator: Operator | None = None,
+        *,
+        winding: WindingModel | None = None,
+        by: str = "",
     ) -> None:
         self._bench = bench
         self._hello = hello
@@ -95,9 +101,11 @@ class Loop:
         self._clock = clock
         self._progress = progress
         self._operator = operator
-        start = rig.world.winding_start_deg_c if rig.world is not None and rig.simulated else None
-        self.interlocks = Interlocks(rig, hello.channels, hello.tick_hz, start)
-        self.runner = Runner(rig, protocol, hello.channels, hello.tick_hz)
+        if winding is None and rig.motor is not None and rig.simulated and rig.world is not None:
+            # The history of a simulated motor is known: its file says at what temperature it begins.
+            winding = WindingModel(rig.motor, rig.limits.winding_deg_c, rig.world.winding_start_deg_c)
+        self.interlocks = Interlocks(rig, hello.channels, hello.tick_hz, winding)
+        self.runner = Runner(rig, protocol, hello.channels, hello.tick_hz, by)
         # One frame a read: what a frame decides then takes effect before the next one, at every pace.
         self._wait_s = hello.frame_rows * hello.row_period_ticks / hello.tick_hz
         self._tick = 0
@@ -106,25 +114,38 @@ class Loop:
         self._verdicts: list[Verdict] = []
         self._trips: list[Trip] = []
         self._outcome: RunOutcome | None = None
+        self._signals = HaltSignals()
+        self._signal_told = False
 
     def run(self) -> RunOutcome:
-        """Go on until the protocol is through, or something ends it; never raises for a bench or a disk."""
-        fresh_s = self._clock.now_s()
+        """Go on until the protocol is through, or something ends it; never raises for a bench or a disk.
+
+        Ctrl-C halts and waits for standstill; a second one leaves at once, with the drive off.
+        """
         try:
-            while self._outcome is None:
-                reading = self._bench.read(self._wait_s)
-                now_s = self._clock.now_s()
-                if reading.blocks:
-                    fresh_s = now_s
-                    self._take(reading)
-                else:
-                    self._without_rows(now_s - fresh_s, reading.notices)
+            with self._signals:
+                return self._go_on()
         except BenchError as error:
             return self._broken(LINK_FAILED, str(error), error)
         except JournalFailure as error:
             return self._broken(HALTED, str(error), error)
         except KeyboardInterrupt:
-            return self._broken(HALTED, "halted by the operator", None)
+            return self._broken(HALTED, "halted by the operator, who did not wait for standstill", None)
+        except BaseException:
+            with contextlib.suppress(BenchError):
+                self._bench.halt(Halt.COAST)
+            raise
+
+    def _go_on(self) -> RunOutcome:
+        fresh_s = self._clock.now_s()
+        while self._outcome is None:
+            reading = self._bench.read(self._wait_s)
+            now_s = self._clock.now_s()
+            if reading.blocks:
+                fresh_s = now_s
+                self._take(reading)
+            else:
+                self._without_rows(now_s - fresh_s, reading.notices)
         return self._outcome
 
     # -- one turn --------------------------------------------------------------------------------------
@@ -137,6 +158,7 @@ class Loop:
                 self._origin = int(block.tick[0])
             trips = self._interlocks(block, notices)
             if not trips:
+                # Also after a trip, once it has been dealt with: a ramp down needs a board that stays on.
                 self._bench.heartbeat()
             self._record(frame, block)
             events = [Event(notice.tick, "notice", _told(notice)) for notice in notices]
@@ -145,7 +167,7 @@ class Loop:
             notices = []
             verdicts = self._verdicts + self._analyst.feed([block], events)
             self._verdicts = []
-            operator = self._operator.inputs() if self._operator is not None else ()
+            operator = self._inputs()
             commands = self.runner.advance(block, self.interlocks.flap_hz, verdicts, trips, operator)
             for command in commands:
                 self._carry_out(command)
@@ -155,10 +177,20 @@ class Loop:
             if self._outcome is not None:
                 return
 
+    def _inputs(self) -> list[OperatorInput]:
+        inputs = list(self._operator.inputs()) if self._operator is not None else []
+        if self._signals.asked and not self._signal_told:
+            self._signal_told = True
+            inputs.append(OperatorInput("halt"))
+            if self._operator is not None:
+                self._operator.prompt("halted; off does not mean stopped: waiting for standstill")
+        return inputs
+
     def _interlocks(self, block: RowBlock, notices: Sequence[Notice]) -> list[Trip]:
-        trips = self.interlocks.check(block)
+        trips: list[Trip] = []
         for notice in notices:
             trips += self.interlocks.notice(notice)
+        trips += self.interlocks.check(block)
         trips += self.interlocks.disk(self._journal.free_bytes)
         self._trips += trips
         return trips
@@ -181,7 +213,8 @@ class Loop:
             return
         self._trips += trips
         trip = trips[0]
-        self._bench.halt(trip.halt)
+        with contextlib.suppress(BenchError):  # the board's own watchdog has it by now
+            self._bench.halt(trip.halt)
         self._event(Event(self._tick, "trip", trip.to_json()))
         self._event(Event(self._tick, "halt", {"how": trip.halt.value, "cause": trip.cause}))
         self._finish(LINK_FAILED, trip.sentence)

@@ -5,32 +5,22 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any, Protocol
-
-import numpy as np
+from typing import Any
 
 from drivers.channels import ChannelTable
 from drivers.rows import RowBlock, Status
 from rig.description import RigDescription
 from rig.run import actions as ac
 from rig.run import commands as cm
-from rig.verdicts import Condition, LevelVerdict, TapVerdict, Verdict
+from rig.run.inputs import OperatorInput
+from rig.run.knowledge import Knowledge
+from rig.run.zero import ZeroMeans
+from rig.verdicts import Verdict
 
 #: Attempts at capture per level for a body on an end stop, rising.
 CAPTURE_TRIES = 2
 #: How long the verdict of an interval is waited for before going on without it.
 VERDICT_S = 2.0
-HELD = ("held", "friction_held")
-
-
-class Input(Protocol):
-    """An operator's input as `rig.run.runner.OperatorInput` has it."""
-
-    @property
-    def kind(self) -> str: ...
-
-    @property
-    def reason(self) -> str: ...
 
 
 @dataclass(frozen=True)
@@ -50,33 +40,32 @@ class Walker:
     """Begins each action, waits for its end, goes on to the next."""
 
     def __init__(
-        self, rig: RigDescription, course: Sequence[ac.Action], channels: ChannelTable, tick_hz: int
+        self,
+        rig: RigDescription,
+        course: Sequence[ac.Action],
+        channels: ChannelTable,
+        tick_hz: int,
+        by: str = "",
     ) -> None:
         self._rig = rig
         self._course = tuple(course)
         self._tick_hz = tick_hz
-        self._body = channels.measuring("body angle")
-        self._load = channels.measuring("vertical load")
-        self._channels = channels
+        self._by = by
         self._at = 0
         self._begun: int | None = None  # tick at which the present action began
         self._tick = 0
         self.enabled = False
         self._level: ac.BeginLevel | None = None
         self._from_v = 0.0  # where the drive stood before the present ramp
-        self._state = ""
-        self._mean_rad = math.nan
-        self._settled_tick = -1
-        self._half_width: float | None = None
-        self._was_held = False
-        self._lost_in_row = 0
-        self._ended: set[int] = set()
+        self._known = Knowledge()
+        self._zero = ZeroMeans(channels)
+        self._ended: set[int] = set()  # staircases that are over before their last level
         self._tries = 0
         self._taps = 0
+        self._last_tap: tuple[int, ac.Action] | None = None  # level and action of the last tap
+        self._excluded = -1  # the last tap the operator threw out
         self._strike_from: int | None = None  # of the tap now observed
         self._sign = 1.0
-        self._sums = np.zeros(2)
-        self._count = 0
         self._acknowledged = False
         self._asked_tick: int | None = None  # an interval ended; its verdict has not come yet
 
@@ -95,7 +84,7 @@ class Walker:
             level.level if level else -1,
             level.direction if level else "",
             level.drive_v if level else 0.0,
-            self._state,
+            self._known.state,
             prompt,
         )
 
@@ -105,11 +94,13 @@ class Walker:
         tick: int,
         flap_hz: float,
         verdicts: Sequence[Verdict],
-        operator: Sequence[Input],
+        operator: Sequence[OperatorInput],
     ) -> list[cm.Command]:
         """Commands after one frame."""
         self._tick = tick
-        self._listen(verdicts)
+        self._known.listen(verdicts)
+        if self._known.answered:
+            self._asked_tick = None
         made: list[cm.Command] = []
         for one in operator:
             if one.kind == "acknowledge":
@@ -140,23 +131,6 @@ class Walker:
             self._next()
         return made
 
-    # -- what is known of the body ---------------------------------------------------------------------
-
-    def _listen(self, verdicts: Sequence[Verdict]) -> None:
-        for verdict in verdicts:
-            if isinstance(verdict, Condition):
-                self._state = verdict.state
-                self._mean_rad = verdict.mean_angle_rad
-                if verdict.settled:
-                    self._settled_tick = verdict.tick
-            elif isinstance(verdict, LevelVerdict):
-                if verdict.state:
-                    self._state = verdict.state
-                self._half_width = verdict.decay_half_width_per_s
-                self._asked_tick = None
-            elif isinstance(verdict, TapVerdict) and verdict.returned:
-                self._state = "held"
-
     @property
     def _waited_s(self) -> float:
         return (self._tick - (self._begun or 0)) / self._tick_hz
@@ -178,13 +152,13 @@ class Walker:
                 made: list[cm.Command] = []
                 if not self.enabled:
                     self.enabled = True
-                    made.append(cm.Enable("armed", {}))
+                    made.append(cm.Enable("armed", {"by": self._by}))
                 data = {"target_v": action.to_v, "slew_v_per_s": action.slew_v_per_s}
                 made.append(cm.Drive("drive", data, action.to_v, action.slew_v_per_s))
                 return made
             case ac.BeginLevel():
                 self._level = action
-                self._half_width = None
+                self._known.new_level()
                 self._tries = 0
                 return [
                     self._note(
@@ -201,16 +175,13 @@ class Walker:
                 return [cm.LockDrive(action.kind, {"level": level})]
             case ac.Strike():
                 return self._begin_strike(action)
-            case ac.StrikeUntilPrecise():
-                return self._strike(action, self._sign * action.impulse_n_m_s)
             case ac.LetGo():
-                number = self._taps
+                data = {"tap": self._taps, "level": level, "angle_rad": action.angle_rad}
                 self._taps += 1
-                data = {"tap": number, "level": level, "angle_rad": action.angle_rad}
+                self._last_tap = (level, action)
                 return [cm.LockDrive(), cm.ReleaseBody("release", data, action.angle_rad)]
             case ac.ReadZero():
-                self._sums[:] = 0.0
-                self._count = 0
+                self._zero.restart()
             case ac.Ask():
                 self._acknowledged = False
                 return [cm.PromptOperator("prompt", {"text": action.text}, action.text)]
@@ -222,26 +193,31 @@ class Walker:
 
     def _begin_strike(self, action: ac.Strike) -> list[cm.Command]:
         impulse = action.impulse_n_m_s
-        if action.planned and self._state not in HELD:
+        if action.planned and not self._known.held:
             if not self._worth_trying:
                 return []
             self._tries += 1
             middle = 0.5 * (self._rig.stops.low_rad + self._rig.stops.high_rad)
-            impulse = math.copysign(impulse, middle - self._mean_rad)
+            impulse = math.copysign(impulse, middle - self._known.mean_rad)
         return self._strike(action, impulse)
 
     @property
     def _worth_trying(self) -> bool:
         """Whether a tap on a body that is not held could capture it."""
         rising = self._level is not None and self._level.direction == "rising"
-        return rising and self._state in ("at_stop", "lost") and self._tries < CAPTURE_TRIES
+        away = self._known.state in ("at_stop", "lost")
+        return rising and away and self._tries < CAPTURE_TRIES
 
     def _strike(self, action: ac.Strike | ac.StrikeUntilPrecise, impulse: float) -> list[cm.Command]:
         self._strike_from = self._tick
         self._sign = -self._sign
-        number = self._taps
+        number, level = self._taps, self._level.level if self._level else -1
         self._taps += 1
-        data: dict[str, Any] = {"tap": number, "level": self._level.level if self._level else -1}
+        again = ac.Strike(
+            impulse_n_m_s=impulse, observe_s=action.observe_s, by=action.by, staircase=action.staircase
+        )
+        self._last_tap = (level, again)
+        data: dict[str, Any] = {"tap": number, "level": level}
         made: list[cm.Command] = [cm.LockDrive()]
         if action.by == "hand":
             # What a hand gives is measured; the plan only says which way.
@@ -254,17 +230,26 @@ class Walker:
         return made
 
     def _redo(self, reason: str) -> list[cm.Command]:
-        """Exclude the last tap and give it again, if it is still being observed or was just before."""
-        if not self._taps:
+        """Exclude the last tap, and give it again while its level lasts."""
+        number = self._taps - 1
+        if self._last_tap is None or number == self._excluded:
             return []
+        self._excluded = number
+        level, again = self._last_tap
         made: list[cm.Command] = []
         action = None if self.done else self._course[self._at]
-        excluded = {"tap": self._taps - 1, "reason": reason or "the operator asked for it again"}
-        if isinstance(action, ac.Strike) and self._strike_from is not None:
+        if self._strike_from is not None:  # it is still being observed
             made.append(self._tap_end())
-            self._begun = None
             self._strike_from = None
-        made.append(cm.Record("tap_excluded", excluded))
+            if isinstance(action, ac.Strike):
+                self._begun = None
+        elif self._level is not None and self._level.level == level and not self.done:
+            # Once more after what goes on now, or before what has not begun.
+            at = self._at if self._begun is None else self._at + 1
+            self._course = (*self._course[:at], again, *self._course[at:])
+        made.append(
+            cm.Record("tap_excluded", {"tap": number, "reason": reason or "the operator asked for it again"})
+        )
         return made
 
     # -- ending ----------------------------------------------------------------------------------------
@@ -273,7 +258,7 @@ class Walker:
         level = self._level.level if self._level else -1
         match action:
             case ac.GoTo():
-                # The board says when its register has arrived, but a frame on its way may not know of the ramp yet.
+                # The board tells when its register has arrived; a frame on its way may not know of the ramp.
                 due_s = abs(action.to_v - self._from_v) / action.slew_v_per_s
                 arrived = self._waited_s >= 0.98 * due_s and not block.status & Status.RAMPING
                 if arrived and self._tick > (self._begun or 0):
@@ -283,7 +268,7 @@ class Walker:
             case ac.Wait():
                 return self._waited_s >= action.for_s, []
             case ac.Settle():
-                settled = self._settled_tick >= (self._begun or 0) + int(action.least_s * self._tick_hz)
+                settled = self._known.settled_tick >= (self._begun or 0) + int(action.least_s * self._tick_hz)
                 if settled or self._waited_s >= action.most_s:
                     waited = round(self._waited_s, 3)
                     return True, [self._note("settled", level=level, settled=settled, waited_s=waited)]
@@ -318,6 +303,7 @@ class Walker:
     def _interval_end(self, kind: str, **data: Any) -> cm.UnlockDrive:
         if self._level is not None:
             self._asked_tick = self._tick
+            self._known.ask()
         return cm.UnlockDrive(kind, data)
 
     def _struck(self, observe_s: float) -> tuple[bool, list[cm.Command]]:
@@ -326,8 +312,10 @@ class Walker:
 
     def _until_precise(self, action: ac.StrikeUntilPrecise) -> tuple[bool, list[cm.Command]]:
         if self._strike_from is None:  # between taps: the verdict on the last one has come
-            known = self._half_width is not None and self._half_width <= action.precision_per_s
-            if known or self._state not in HELD or self._waited_s >= action.most_s:
+            width = self._known.half_width_per_s
+            known = width is not None and width <= action.precision_per_s
+            nothing_to_learn = self._known.state != "" and not self._known.held
+            if known or nothing_to_learn or self._waited_s >= action.most_s:
                 return True, []
             return False, self._strike(action, self._sign * action.impulse_n_m_s)
         finished, made = self._struck(action.observe_s)
@@ -341,28 +329,15 @@ class Walker:
         if flap_hz >= self._rig.limits.standstill_hz:
             self._begun = self._tick  # wait for standstill first
             return False, []
-        columns = [column for column in (self._body, self._load) if column is not None]
-        for place, column in enumerate(columns):
-            self._sums[place] += float(self._channels[column].values(block.raw[:, column]).sum())
-        self._count += len(block)
+        self._zero.add(block)
         if self._waited_s < action.for_s:
             return False, []
-        means = self._sums / max(self._count, 1)
-        data: dict[str, Any] = {"body_rad": float(means[0])}
-        if self._load is not None:
-            data["load_n"] = float(means[1])
-        return True, [cm.Record("zero", data)]
+        return True, [cm.Record("zero", dict(self._zero.means()))]
 
     def _end_level(self, action: ac.EndLevel) -> list[cm.Command]:
         level = self._level
         self._level = None
-        if level is not None and level.stop_after_lost:
-            if self._state in HELD:
-                self._was_held = True
-                self._lost_in_row = 0
-            elif self._was_held or level.direction == "falling":
-                self._lost_in_row += 1
-            if self._lost_in_row >= level.stop_after_lost:
-                self._ended.add(level.staircase)
-                self._lost_in_row = 0
+        stop_after = level.stop_after_lost if level is not None else 0
+        if level is not None and stop_after and self._known.enough_lost(level.direction, stop_after):
+            self._ended.add(level.staircase)
         return [self._note("level_end", level=action.level)]

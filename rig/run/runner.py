@@ -10,7 +10,8 @@
     turning    it has not after TURNING_AT_MOST_S                       finished (and says so)
     finished   never
 
-A trip while stopping replaces a gentler halt by its own. What the runner does depends on ticks, rows and
+A trip while stopping replaces a gentler halt by its own, never a harder one; after that it is only written down.
+An interval cut short by a halt has no end event. What the runner does depends on ticks, rows and
 verdicts only, so the same session gives the same commands again.
 
 Taps of a staircase's plan are skipped where they could teach nothing: on a body lost from the held state while
@@ -22,15 +23,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 from drivers.channels import ChannelTable
 from drivers.contract import Halt
 from drivers.rows import RowBlock, Status
 from rig.description import RigDescription
-from rig.run import actions as ac
 from rig.run import commands as cm
 from rig.run.course import course
+from rig.run.inputs import OperatorInput
 from rig.run.interlocks import Trip
 from rig.run.progress import Standing, Walker
 from rig.steps import Protocol
@@ -40,14 +40,8 @@ READY, RUNNING, STOPPING, TURNING, FINISHED = "ready", "running", "stopping", "t
 STANDSTILL_S = 0.5
 TURNING_AT_MOST_S = 120.0
 DONE, HALTED = 0, 3
-
-
-@dataclass(frozen=True)
-class OperatorInput:
-    """What the operator did: "halt", "acknowledge" (a prompt) or "redo" (the last tap; `reason`)."""
-
-    kind: str
-    reason: str = ""
+#: A coast comes before a brake: it is the one halt that asks nothing of the bridge.
+HARDNESS = {Halt.RAMP: 0, Halt.BRAKE: 1, Halt.COAST: 2}
 
 
 class Runner:
@@ -59,13 +53,13 @@ class Runner:
         self.rig = rig
         self.state = READY
         self.tick_hz = tick_hz
-        self._by = by
-        self._walker = Walker(rig, course(protocol, rig.limits.slew_v_per_s), channels, tick_hz)
+        self._protocol = protocol
+        self._walker = Walker(rig, course(protocol, rig.limits.slew_v_per_s), channels, tick_hz, by)
         self._exit = (DONE, "done")
         self._stop_from = 0
         self._still_from: int | None = None
         self._off_tick = 0
-        self._locked_kind: tuple[str, dict[str, object]] | None = None
+        self._how: Halt | None = None  # the halt under way
 
     @property
     def standing(self) -> Standing:
@@ -88,20 +82,22 @@ class Runner:
         tick = int(block.tick[-1])
         if self.state == FINISHED:
             return []
-        if trips and self.state in (READY, RUNNING, STOPPING):
+        if trips and self.state != TURNING:
             return self._trip(tick, trips)
-        if any(one.kind == "halt" for one in operator) and self.state in (READY, RUNNING):
+        if any(one.kind == "halt" for one in operator) and self.state in (READY, RUNNING, STOPPING):
             return self._halt(tick)
+        made: list[cm.Command] = []
         if self.state == READY:
             self.state = RUNNING
+            made.append(cm.Record("run", {"rig": self.rig.name, "protocol": self._protocol.name}))
         if self.state == RUNNING:
-            made = self._walker.advance(block, tick, flap_hz, verdicts, operator)
+            made += self._walker.advance(block, tick, flap_hz, verdicts, operator)
             if not self._walker.done:
                 return made
             return made + self._end(tick)
         if self.state == STOPPING:
             return self._stopping(block, tick, flap_hz)
-        return self._turning(tick, flap_hz)
+        return self._note_trips(trips) + self._turning(tick, flap_hz)
 
     # -- ends ------------------------------------------------------------------------------------------
 
@@ -113,28 +109,40 @@ class Runner:
             return []
         self.state = STOPPING
         self._stop_from = tick
-        data = {"how": Halt.RAMP.value, "cause": "end of the protocol"}
-        return [cm.HaltDrive("halt", data, Halt.RAMP, self.rig.limits.slew_v_per_s)]
+        return [self._halt_drive(Halt.RAMP, "end of the protocol")]
 
     def _halt(self, tick: int) -> list[cm.Command]:
+        if self._exit[0] == DONE:
+            self._exit = (HALTED, "halted by the operator")
         how = self.rig.halts.get("operator", Halt.COAST)
-        self._exit = (HALTED, "halted by the operator")
         self.state = STOPPING
+        if not self._harder(how):
+            return []
         self._stop_from = tick
-        data = {"how": how.value, "cause": "operator"}
-        return [cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s)]
+        return [self._halt_drive(how, "operator")]
 
     def _trip(self, tick: int, trips: Sequence[Trip]) -> list[cm.Command]:
-        made: list[cm.Command] = [cm.Record("trip", trip.to_json()) for trip in trips]
+        made = self._note_trips(trips)
         # The hardest halt any of them asks for: a coast takes the torque away at once.
-        how = next((h for h in (Halt.COAST, Halt.BRAKE) if any(t.halt is h for t in trips)), Halt.RAMP)
-        if self._exit[0] == DONE:
-            self._exit = (HALTED, trips[0].sentence)
+        worst = max(trips, key=lambda trip: HARDNESS[trip.halt])
         self.state = STOPPING
-        self._stop_from = tick
-        data = {"how": how.value, "cause": trips[0].cause}
-        made.append(cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s))
+        if self._harder(worst.halt):
+            self._stop_from = tick
+            made.append(self._halt_drive(worst.halt, worst.cause))
         return made
+
+    def _harder(self, how: Halt) -> bool:
+        return self._how is None or HARDNESS[how] > HARDNESS[self._how]
+
+    def _note_trips(self, trips: Sequence[Trip]) -> list[cm.Command]:
+        if trips and self._exit[0] == DONE:
+            self._exit = (HALTED, trips[0].sentence)
+        return [cm.Record("trip", trip.to_json()) for trip in trips]
+
+    def _halt_drive(self, how: Halt, cause: str) -> cm.HaltDrive:
+        self._how = how
+        data = {"how": how.value, "cause": cause}
+        return cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s)
 
     def _stopping(self, block: RowBlock, tick: int, flap_hz: float) -> list[cm.Command]:
         enabled = bool(block.status & Status.ENABLED)
@@ -172,4 +180,4 @@ class Runner:
         return []
 
 
-__all__ = ["FINISHED", "READY", "RUNNING", "STOPPING", "TURNING", "OperatorInput", "Runner", "ac"]
+__all__ = ["FINISHED", "READY", "RUNNING", "STOPPING", "TURNING", "OperatorInput", "Runner"]

@@ -11,8 +11,8 @@ LONGEST_S = 1.0
 class TurnCounter:
     """Flap rate from encoder counts at the ends of frames.
 
-    A rate over less than a turn would show the ripple of the crank within its turn; a single wrong count
-    changes a whole turn by 0.05 %.
+    A rate over less than a turn would show the ripple of the crank within its turn. The median of the last
+    three is told, so that one garbled count neither trips a limit nor looks like a crank at rest.
     """
 
     def __init__(self, counts_per_turn: float, tick_hz: int) -> None:
@@ -21,6 +21,7 @@ class TurnCounter:
         self._counts = counts_per_turn
         self._tick_hz = tick_hz
         self._history: deque[tuple[int, int]] = deque()
+        self._last: deque[float] = deque(maxlen=3)
         self.flap_hz = 0.0
 
     def add(self, tick: int, count: int) -> float:
@@ -35,11 +36,13 @@ class TurnCounter:
         for before_tick, before_count in reversed(history):
             turned = abs(count - before_count)
             if turned >= self._counts:
-                self.flap_hz = turned / self._counts * self._tick_hz / (tick - before_tick)
-                return self.flap_hz
+                return self._tell(turned, tick - before_tick)
         first_tick, first_count = history[0]
-        if tick > first_tick:
-            self.flap_hz = abs(count - first_count) / self._counts * self._tick_hz / (tick - first_tick)
+        return self._tell(abs(count - first_count), tick - first_tick) if tick > first_tick else self.flap_hz
+
+    def _tell(self, turned: int, ticks: int) -> float:
+        self._last.append(turned / self._counts * self._tick_hz / ticks)
+        self.flap_hz = sorted(self._last)[len(self._last) // 2]
         return self.flap_hz
 
     @property
