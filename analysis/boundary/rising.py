@@ -11,8 +11,8 @@ from analysis.boundary.records import BoundaryEstimate, LevelPoint
 def rising_boundary(levels: Sequence[LevelPoint]) -> BoundaryEstimate:
     """Between the highest rising level that did not hold the body and the lowest above which all did.
 
-    The interval is the bracket of the two levels; the value its middle, the std that of a uniform distribution
-    (JCGM 100:2008, 4.3.7). It belongs to the taps and dwells of this run: capture is chance, and another tap would
+    The value is the first level that held, the interval the bracket of the two levels, the std that of a uniform
+    distribution over it (JCGM 100:2008, 4.3.7). It belongs to the taps and dwells of this run: capture is chance, and another tap would
     have another boundary. The reason gives the share of attempts that succeeded at the lowest level that captured,
     with its Clopper-Pearson 95 % limits.
     """
@@ -47,13 +47,12 @@ def rising_boundary(levels: Sequence[LevelPoint]) -> BoundaryEstimate:
     return BoundaryEstimate(
         "capture",
         reason,
-        *_middle(below.flap_hz, above.flap_hz),
-        *_middle(below.drive_v, above.drive_v),
+        *_bracket(below.flap_hz, above.flap_hz),
+        *_bracket(below.drive_v, above.drive_v),
         levels=len(rising),
         taps=sum(level.tried for level in rising),
     )
 
 
-def _middle(low: float, high: float) -> tuple[float, float, float, float]:
-    low, high = min(low, high), max(low, high)
-    return 0.5 * (low + high), (high - low) / math.sqrt(12.0), low, high
+def _bracket(below: float, above: float) -> tuple[float, float, float, float]:
+    return above, abs(above - below) / math.sqrt(12.0), min(below, above), max(below, above)

@@ -7,10 +7,11 @@ from numpy.typing import NDArray
 
 from analysis.decay.model import mode_columns
 from analysis.decay.projection import ModeFit, refine, starts
-from analysis.decay.record import Blocks, TapRecord, blocks_of, nuisance_rows, orthonormal
+from analysis.decay.record import TapRecord, blocks_of, nuisance_rows, orthonormal
 from analysis.decay.uncertainty import bandwidth
 
 FloatArray = NDArray[np.float64]
+LOWEST_LINE = 13.0  # twice the periodogram over its mean: no line worth a second mode lies below
 MARGIN = 6.0  # by which the Bayesian information criterion must prefer two modes
 
 
@@ -24,11 +25,13 @@ def doubts(record: TapRecord, mode: ModeFit) -> tuple[str, ...]:
     rows = blocks.mean(nuisance_rows(record))
     data = blocks.mean(record.angle_rad)
     found = []
-    if amplitude_dependence(blocks.time_s, data, rows, mode) < 0.005:
+    changing = amplitude_dependence(blocks.time_s, data, rows, mode)
+    if changing < 0.005:
         found.append("amplitude_dependent")
-    if straight_envelope_gain(blocks.time_s, data, rows, mode) > MARGIN:
+    # A straight-line envelope is one whose decay rate changes; without a hint of that it need not be tried.
+    if changing < 0.05 and straight_envelope_gain(blocks.time_s, data, rows, mode) > MARGIN:
         found.append("friction_like")
-    if second_mode_gain(blocks, data, rows, mode) > MARGIN:
+    if second_mode_gain(blocks.time_s, data, rows, mode) > MARGIN:
         found.append("two_modes")
     return tuple(found)
 
@@ -111,15 +114,16 @@ def straight_envelope_gain(time: FloatArray, data: FloatArray, rows: FloatArray,
     return count * float(np.log((exponential @ exponential) / best.fun)) if best.fun > 0.0 else 0.0
 
 
-def second_mode_gain(blocks: Blocks, data: FloatArray, rows: FloatArray, mode: ModeFit) -> float:
+def second_mode_gain(time: FloatArray, data: FloatArray, rows: FloatArray, mode: ModeFit) -> float:
     """How much the information criterion prefers two modes: n log(rss1/rss2) - 4 log n, n effective."""
-    time = blocks.time_s
-    basis = orthonormal(rows)
     columns = np.empty((6, len(time)))
     mode_columns(time, mode.sigma, mode.q, columns)
     slopes = np.array((mode.c @ columns[2:4], mode.c @ columns[4:6]))
-    one = orthonormal(np.concatenate((basis, columns[:2], slopes)))
+    one = orthonormal(np.concatenate((rows, columns[:2], slopes)))
     left = data - (one @ data) @ one
+    spectrum = np.abs(np.fft.rfft(left, 2 * len(left))) ** 2
+    if 2.0 * float(spectrum.max()) < LOWEST_LINE * float(left @ left):
+        return 0.0
     top_hz = 0.4 / float(np.median(np.diff(time)))
     pairs = starts(time, left, one, min(top_hz, 15.0), count=1)
     second = refine(time, left, one, *pairs[0], top_hz, iterations=8)

@@ -171,7 +171,7 @@ def _assemble(
     kappa, kappa_std = q + sigma**2, stiffness_std(sigma, covariance)
     status, reason = _identified(sigma, q, decay_std, q_std, float(time[-1]))
     ambient = driven.ambient_rms if driven is not None and driven.ok else float("nan")
-    if status == "ok" and amplitude < 2.0 * ambient:
+    if status == "ok" and amplitude < 1.2 * ambient:
         status, reason = "no_signal", "the swing is no larger than the ambient motion of the mode"
     found = DecayFit(
         status=status,

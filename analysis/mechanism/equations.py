@@ -40,7 +40,9 @@ DRIVEN, COASTING, BRAKING = 0, 1, 2
 FLOATING, GEARED = 0, 1
 
 # Parameters, all floats.
-(CARRIAGE, MASS, CM_UP, CM_FORWARD, INERTIA, MOVING, SHUTTLE, THROW, SPRING, DAMPER, SHAKE, PRELOAD) = range(12)
+(CARRIAGE, MASS, CM_UP, CM_FORWARD, INERTIA, MOVING, SHUTTLE, THROW, SPRING, DAMPER, SHAKE, PRELOAD) = range(
+    12
+)
 (FLYWHEEL, STROKE, RADIUS, AREA, INCIDENCE, ARM, WING_INERTIA, AIR_DENSITY, FLIP) = range(12, 21)
 (HINGE_DAMPING, STICKING, STOP_LOW, STOP_HIGH, STOP_STIFFNESS, STOP_DAMPING) = range(21, 27)
 (OHM, HENRY, TORQUE_CONSTANT, GEAR, VISCOUS, COULOMB, COULOMB_RATE, COPPER_SLOPE) = range(27, 35)
@@ -207,8 +209,21 @@ def rates(x, p, n, mode, volts, ohm, torque, grip, angle, dx):  # type: ignore[n
         for trial in range(2):
             g = gravity + trial
             t2, y2, c2 = _accelerations(
-                carriage, inertia, coupling, weight, a_crank, b_crank, shake, sin_c, cos_c, rate,
-                r1 - mass * g * offset, r2 - g * b_crank, r3 - moving * (g - borne), grip, pull,
+                carriage,
+                inertia,
+                coupling,
+                weight,
+                a_crank,
+                b_crank,
+                shake,
+                sin_c,
+                cos_c,
+                rate,
+                r1 - mass * g * offset,
+                r2 - g * b_crank,
+                r3 - moving * (g - borne),
+                grip,
+                pull,
             )
             force1 = moving * (y2 + g) + mass * offset * t2 + b_crank * c2 + inertial
             if trial == 0:
@@ -223,8 +238,21 @@ def rates(x, p, n, mode, volts, ohm, torque, grip, angle, dx):  # type: ignore[n
         dx[BASE_RATE] = 0.0
     r1 -= mass * gravity * offset
     spin, up, turn = _accelerations(
-        carriage, inertia, coupling, weight, a_crank, b_crank, shake, sin_c, cos_c, rate,
-        r1, r2 - gravity * b_crank, r3 - moving * (gravity - borne), grip, pull,
+        carriage,
+        inertia,
+        coupling,
+        weight,
+        a_crank,
+        b_crank,
+        shake,
+        sin_c,
+        cos_c,
+        rate,
+        r1,
+        r2 - gravity * b_crank,
+        r3 - moving * (gravity - borne),
+        grip,
+        pull,
     )
     force = moving * (up + gravity) + mass * offset * spin + b_crank * turn + inertial
 
@@ -366,7 +394,9 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
         for s in range(slots):
             mode = int(r[MOTOR])
             drive, target, change = r[DRIVE_V], r[TARGET_V], r[SLEW] * slot_s
-            r[DRIVE_V] = target if abs(target - drive) <= change else drive + math.copysign(change, target - drive)
+            r[DRIVE_V] = (
+                target if abs(target - drive) <= change else drive + math.copysign(change, target - drive)
+            )
             if mode == COASTING:
                 r[CURRENT] = 0.0
             push = noise * white(p[SEED], first + s) if noise > 0.0 else 0.0

@@ -157,3 +157,61 @@ def bound(case: Case, made: Made) -> float:
     left = first - rest @ np.linalg.lstsq(rest, first, rcond=None)[0]
     norm = np.linalg.norm(time * envelope * cosine)
     return float(variance / (left @ left) / norm**2)
+
+
+def driven_bound(case: Case) -> float:
+    """Bound of the decay rate's variance, (1/s)^2, for correlated noise with the quiet record.
+
+    The Fisher information of a Gaussian record with known noise covariance: the tapped record's mean carries
+    (sigma, omega, amplitude, phase, offset, drift), and for a driven mode both records' covariance carries
+    sigma and omega as well (half the trace of (C^-1 dC)^2). Block means of 1/60 s without ripple.
+    """
+    step = 1.0 / 60.0
+    total = np.zeros((2, 2))
+    for span, tapped in ((case.quiet_s, False), (case.window_s, True)):
+        time = step * np.arange(round(span / step))
+        theta = np.array([case.decay_per_s, 2.0 * np.pi * case.mode_hz])
+        covariance = _covariance(case, time, theta)
+        inverse = np.linalg.inv(covariance)
+        columns = [np.ones_like(time), time]
+        slopes = []
+        if tapped:
+            swing = np.exp(-theta[0] * time)
+            cosine, sine = np.cos(theta[1] * time + case.phase), np.sin(theta[1] * time + case.phase)
+            columns += [swing * cosine, swing * sine]
+            slopes = [-case.amplitude * time * swing * cosine, -case.amplitude * time * swing * sine]
+        nuisance = np.array(columns)
+        weighted = nuisance @ inverse
+        gram = np.linalg.inv(weighted @ nuisance.T)
+        information = np.zeros((2, 2))
+        if slopes:
+            mean = np.array(slopes)
+            across = weighted @ mean.T
+            information += mean @ inverse @ mean.T - across.T @ gram @ across
+        if case.driven > 0.0:
+            changes = []
+            for k in range(2):
+                shift = np.zeros(2)
+                shift[k] = 1e-4
+                upper, lower = _covariance(case, time, theta + shift), _covariance(case, time, theta - shift)
+                changes.append(inverse @ (upper - lower) / 2e-4)
+            information += 0.5 * np.array([[np.trace(a @ b) for b in changes] for a in changes])
+        total += information
+    return float(np.linalg.inv(total)[0, 0])
+
+
+def _covariance(case: Case, time: FloatArray, theta: FloatArray) -> FloatArray:
+    """Covariance of block means: noise, disturbance, and the mode at the torque that `driven` stands for."""
+    lag = np.abs(time[:, None] - time[None, :])
+    samples = case.rate_hz * (time[1] - time[0])
+    white = (case.noise**2 + (COUNT**2 / 12.0 if case.quantised else 0.0)) / samples
+    result = white * np.eye(len(time))
+    if case.ambient > 0.0:
+        result += case.ambient**2 * np.exp(-lag / case.ambient_s)
+    if case.driven > 0.0:
+        sigma, omega = theta
+        true_sigma, true_omega = case.decay_per_s, 2.0 * np.pi * case.mode_hz
+        torque = case.driven**2 * 4.0 * true_sigma * (true_sigma**2 + true_omega**2)
+        power = torque / (4.0 * sigma * (sigma**2 + omega**2))
+        result += power * np.exp(-sigma * lag) * (np.cos(omega * lag) + sigma / omega * np.sin(omega * lag))
+    return np.asarray(result)
