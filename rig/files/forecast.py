@@ -11,8 +11,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from analysis.averaged import averaged_fold, decay_per_s, equilibrium, shake_amplitude_m
+from analysis.averaged import averaged_fold, decay_per_s, equilibrium
 from analysis.mechanism.parameters import Mechanism
+from analysis.mechanism.steady import load_torque_n_m, steady_flap_hz
 from analysis.planning import planned_decay_std
 from rig.description import RigDescription
 from rig.run import actions as ac
@@ -51,50 +52,6 @@ class Forecast:
     crossings: tuple[str, ...]
 
 
-def steady_flap_hz(mechanism: Mechanism, drive_v: float, winding_deg_c: float = 25.0) -> tuple[float, float]:
-    """Flap rate in Hz and mean motor current in A at a constant drive, from the balance of torques over a turn."""
-    resistance = mechanism.motor_resistance_ohm * (
-        1.0 + mechanism.copper_coefficient_per_k * (winding_deg_c - 25.0)
-    )
-    constant = mechanism.motor_constant_n_m_per_a * mechanism.gear_ratio
-
-    def current(rate: float) -> float:
-        return (drive_v - constant * rate) / resistance
-
-    low, high = 0.0, max(drive_v, 0.0) / constant
-    for _ in range(60):
-        rate = 0.5 * (low + high)
-        if constant * current(rate) > load_torque(mechanism, rate):
-            low = rate
-        else:
-            high = rate
-    return rate / TWO_PI, current(rate)
-
-
-def load_torque(mechanism: Mechanism, rate: float) -> float:
-    """Mean torque at the crank against the motor, N m: friction, wings, carriage damping; rate in rad/s."""
-    if rate <= 0.0:
-        return 0.0
-    motor_rate = mechanism.gear_ratio * rate
-    friction = mechanism.motor_viscous_n_m_s * motor_rate + mechanism.motor_coulomb_n_m * math.tanh(
-        motor_rate / mechanism.motor_coulomb_rad_per_s
-    )
-    speed = mechanism.wing_radius_m * mechanism.wing_stroke_rad * rate
-    drag = 1.92 - 1.55 * math.cos(2.04 * mechanism.wing_incidence_rad - math.radians(9.82))
-    wings = (
-        0.5
-        * mechanism.air_density_kg_per_m3
-        * mechanism.wing_area_m2
-        * drag
-        * speed**3
-        * 4.0
-        / (3.0 * math.pi)
-    )
-    shake = shake_amplitude_m(mechanism, rate / TWO_PI) * rate
-    carriage = 0.5 * mechanism.carriage_damping_n_s_per_m * shake**2
-    return mechanism.gear_ratio * friction + (wings + carriage) / rate
-
-
 def coast_down_s(mechanism: Mechanism, flap_hz: float, standstill_hz: float) -> float:
     """Time from a flap rate to standstill with open terminals."""
     inertia = mechanism.flywheel_inertia_kg_m2 + 0.5 * (
@@ -102,7 +59,7 @@ def coast_down_s(mechanism: Mechanism, flap_hz: float, standstill_hz: float) -> 
         + mechanism.wing_inertia_kg_m2 * mechanism.wing_stroke_rad**2
     )
     rates = np.linspace(TWO_PI * flap_hz, max(TWO_PI * standstill_hz, 0.05), 400)
-    slowing = np.array([load_torque(mechanism, float(rate)) for rate in rates]) / inertia
+    slowing = np.array([load_torque_n_m(mechanism, float(rate)) for rate in rates]) / inertia
     return float(np.trapezoid(1.0 / np.maximum(slowing, 1e-9), -rates))
 
 
@@ -294,4 +251,4 @@ def _cell(value: float | None, width: int, digits: int) -> str:
     return f"{'-':>{width}}" if value is None else f"{value:{width}.{digits}f}"
 
 
-__all__ = ["Forecast", "LevelForecast", "forecast", "forecast_lines", "steady_flap_hz"]
+__all__ = ["Forecast", "LevelForecast", "forecast", "forecast_lines"]
