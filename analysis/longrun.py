@@ -29,7 +29,9 @@ def autocovariance(coefficients: FloatArray, variance: float, lags: int) -> Floa
     """Autocovariance at lags 0..lags-1 of an autoregressive process, from its power spectrum."""
     size = 1 << max(12, int(np.ceil(np.log2(4 * lags))))
     response = np.fft.rfft(np.concatenate(([1.0], -coefficients)), size)
-    return np.asarray(np.fft.irfft(variance / np.abs(response) ** 2, size)[:lags])
+    # A pole on the unit circle (a series that is one pure line) would divide by zero at its frequency.
+    power = np.maximum(np.abs(response) ** 2, 1e-12)
+    return np.asarray(np.fft.irfft(variance / power, size)[:lags])
 
 
 def mean_variance(series: FloatArray) -> float:
