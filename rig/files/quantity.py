@@ -11,7 +11,7 @@ import re
 from dataclasses import dataclass
 
 NUMBER = r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]{1,2})?"
-PATTERN = re.compile(rf"({NUMBER})\s*([A-Za-z%°µ/^*0-9·\s\-]*)")
+PATTERN = re.compile(rf"({NUMBER})[ \t]*([A-Za-z%°µ/^*0-9· \-]*)")
 UNCERTAIN = re.compile(r"\s*(?:\+-|\+/-|±)\s*")
 
 DEG = math.pi / 180.0
@@ -32,7 +32,7 @@ KINDS: dict[str, tuple[str, str, dict[str, float]]] = {
     "length": ("a length", "30 mm", {"m": 1.0, "cm": 1e-2, "mm": 1e-3, "um": 1e-6, "µm": 1e-6}),
     "area": ("an area", "45 cm^2", {"m^2": 1.0, "cm^2": 1e-4, "mm^2": 1e-6}),
     "inertia": ("a moment of inertia", "154 g cm^2", {"kg m^2": 1.0, "g cm^2": 1e-7, "g mm^2": 1e-9}),
-    "force": ("a force", "100 N", {"N": 1.0, "mN": 1e-3}),
+    "force": ("a force", "100 N", {"N": 1.0, "mN": 1e-3, "kN": 1e3}),
     "torque": ("a torque", "0.4 mN m", {"N m": 1.0, "mN m": 1e-3, "uN m": 1e-6, "µN m": 1e-6}),
     "torque constant": ("a torque per current", "6.6 mN m/A", {"N m/A": 1.0, "mN m/A": 1e-3}),
     "torque density": ("a torque per root Hz", "0.9 uN m/rtHz", {"N m/rtHz": 1.0, "uN m/rtHz": 1e-6}),
