@@ -111,8 +111,10 @@ def profile(
     lowest = max(0.5 * float(data.flap_hz.min()), 1.05 * constants.resonance_hz)
     if lowest >= highest_hz:
         return None
-    fc = np.linspace(lowest, highest_hz, 161)[:-1]
-    phic = np.concatenate((-np.geomspace(0.8, 0.02, 24), [0.0], np.geomspace(0.02, 0.8, 24)))
+    fc = np.linspace(lowest, highest_hz, 82)[:-1]
+    # The body leans towards its fold the more the lower the drive: the sign of that is seen in the angles.
+    lean = 1.0 if np.cov(data.angle, data.flap_hz)[0, 1] <= 0.0 else -1.0
+    phic = lean * np.concatenate(([0.0], np.geomspace(0.02, 0.8, 22)))
     all_fc: list[Values] = []
     all_chi2: list[Values] = []
     best: tuple[float, FittedForm, float, float] | None = None
@@ -130,12 +132,12 @@ def profile(
         # Narrow both searches around the best found so far.
         width = 0.22 * (fc[-1] - fc[0])
         centre = best[1].boundary_hz
-        fc = np.linspace(max(centre - width, lowest), min(centre + width, highest_hz), 60)
+        fc = np.linspace(max(centre - width, lowest), min(centre + width, highest_hz), 41)
         around = max(0.35 * abs(best[1].fold_rad), 0.01)
-        if turn < 3:
-            phic = np.linspace(best[1].fold_rad - around, best[1].fold_rad + around, 41)
-        else:
-            phic = np.linspace(best[1].fold_rad - 2.0 * around, best[1].fold_rad + 2.0 * around, 161)
+        wide = 1.0 if turn < 3 else 2.0
+        phic = np.linspace(
+            best[1].fold_rad - wide * around, best[1].fold_rad + wide * around, 25 if turn < 3 else 61
+        )
     assert best is not None
     order = np.argsort(np.concatenate(all_fc))
     return Profile(np.concatenate(all_fc)[order], np.concatenate(all_chi2)[order], best[1], best[2], best[3])
