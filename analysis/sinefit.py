@@ -67,7 +67,8 @@ def fit_sine(time_s: ArrayLike, signal: ArrayLike, *, above_hz: float = 0.0) -> 
     inphase, quadrature = _three(local, values, frequency)
     iterations = 0
     solution = np.zeros(4)
-    for iterations in range(1, 31):
+    while iterations < 30:
+        iterations += 1
         angle = 2.0 * np.pi * frequency * local
         cosine, sine = np.cos(angle), np.sin(angle)
         slope = 2.0 * np.pi * scale * local * (quadrature * cosine - inphase * sine)
@@ -115,7 +116,8 @@ def crank_from_signal(
     base = _smoothed(
         time, (values - smooth) * np.exp(-1j * carrier), min(bandwidth_hz, 0.3 * line.frequency_hz)
     )
-    return np.asarray(carrier + np.unwrap(np.angle(base)))
+    angle: FloatArray = np.angle(np.asarray(base, dtype=np.complex128))
+    return np.asarray(carrier + np.unwrap(angle))
 
 
 def _three(local: FloatArray, values: FloatArray, frequency: float) -> tuple[float, float]:

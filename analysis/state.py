@@ -171,7 +171,7 @@ def settled(
     if abs(slope) > drift_below_rad_per_s and abs(slope) > 2.0 * noise:
         return Settling(False, f"its mean position drifts by {slope / DEG:.2f} deg/s", slope, ringing)
     if crank is not None:
-        when, rate = turn_rate(time, crank)
+        _, rate = turn_rate(time, crank)
         if len(rate) >= 8:
             early, late = rate[: len(rate) // 3], rate[-(len(rate) // 3) :]
             change = float(late.mean() - early.mean())

@@ -99,7 +99,7 @@ def straight_envelope_gain(time: FloatArray, data: FloatArray, rows: FloatArray,
         return 0.0
     count = effective_count(exponential)
     stops = np.array([0.8, 1.2, 1.8, 2.6]) / mode.sigma
-    start = min((stop for stop in stops), key=lambda stop: left(stop, omega))
+    start = min((float(stop) for stop in stops), key=lambda stop: left(stop, omega))
     best = minimize(
         lambda z: left(start * np.exp(z[0]), omega * np.exp(z[1])),
         [0.0, 0.0],

@@ -162,7 +162,7 @@ def _assemble(
     direction = np.zeros(len(everything))
     direction[0], direction[1], direction[-2] = -sigma, 1.0, -c1
     direction /= size
-    v0_std = float(np.sqrt(max(direction @ spread @ direction, 0.0)))
+    v0_std = float(np.sqrt(max(float(direction @ spread @ direction), 0.0)))
     omega = float(np.sqrt(max(q, 1e-12)))
     amplitude = float(np.hypot(c1, c2 / omega)) if q > 0.0 else abs(c1)
     decay_std = float(np.sqrt(covariance[0, 0]))

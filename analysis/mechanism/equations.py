@@ -65,9 +65,9 @@ NEAR_STOP_RAD = 0.035
 
 
 @kernel(error_model="numpy")
-def _accelerations(
+def _accelerations(  # type: ignore[no-untyped-def]
     carriage, inertia, coupling, weight, a_crank, b_crank, shake, sin_c, cos_c, rate, r1, r2, r3, grip, pull
-):  # type: ignore[no-untyped-def]
+):
     """th'', y'', psi'' from the right-hand sides; with `grip` th'' is given as `pull`."""
     if carriage == FLOATING:
         if grip:
@@ -384,7 +384,7 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
     """
     n = STOPS + 1 if p[ENERGIES] > 0.0 else MOTION
     work = np.zeros((4, STOPS + 1))
-    slots = int(math.ceil(row_s / LONGEST_STEP_S - 1e-9))
+    slots = int(math.ceil(row_s / LONGEST_STEP_S - 1e-9))  # noqa: RUF046  numba's ceil is a float
     slot_s = row_s / slots
     noise = p[NOISE] / math.sqrt(slot_s)
     always_fine = p[ALWAYS_FINE] > 0.0 or p[STICKING] > 0.0 or p[PLAY] > 0.0

@@ -11,7 +11,7 @@ from typing import Any
 
 from rig.command.exits import Exit
 
-LIBRARIES = ("numpy", "scipy", "numba", "h5py", "pyserial", "matplotlib", "jinja2", "rich", "platformdirs")
+LIBRARIES = ("numpy", "scipy", "numba", "h5py", "pyserial", "matplotlib", "jinja2", "rich")
 
 
 def installation() -> tuple[bool, dict[str, str]]:
