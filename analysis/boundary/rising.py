@@ -13,8 +13,8 @@ def rising_boundary(levels: Sequence[LevelPoint]) -> BoundaryEstimate:
 
     The value is the first level that held, the interval the bracket of the two levels, the std that of a uniform
     distribution over it (JCGM 100:2008, 4.3.7). It belongs to the taps and dwells of this run: capture is
-    chance, and another tap would have another boundary. The reason gives the share of attempts that succeeded at the lowest level that
-    captured, with its Clopper-Pearson 95 % limits.
+    chance, and another tap would have another boundary. The reason gives the share of attempts that succeeded
+    at the lowest level that captured, with its Clopper-Pearson 95 % limits.
     """
     from scipy.stats import binomtest
 
