@@ -118,7 +118,7 @@ def profile(
     all_fc: list[Values] = []
     all_chi2: list[Values] = []
     best: tuple[float, FittedForm, float, float] | None = None
-    for turn in range(5):
+    for turn in range(6):
         chi2, forms = _grid(data, constants, fc, phic, gain_std, mu, scales)
         flat = np.nanmin(chi2, axis=(1, 2), initial=np.inf)
         all_fc.append(fc)
@@ -134,9 +134,9 @@ def profile(
         centre = best[1].boundary_hz
         fc = np.linspace(max(centre - width, lowest), min(centre + width, highest_hz), 41)
         around = max(0.35 * abs(best[1].fold_rad), 0.01)
-        wide = 1.0 if turn < 3 else 2.0
+        wide = 1.0 if turn < 4 else 2.0
         phic = np.linspace(
-            best[1].fold_rad - wide * around, best[1].fold_rad + wide * around, 25 if turn < 3 else 61
+            best[1].fold_rad - wide * around, best[1].fold_rad + wide * around, 25 if turn < 4 else 61
         )
     assert best is not None
     order = np.argsort(np.concatenate(all_fc))
