@@ -64,7 +64,7 @@ class Notice:
     data: dict[str, object] = field(default_factory=dict)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Reading:
     """What one `read` brought: frames as received, the same rows placed in time, and notices."""
 

@@ -42,7 +42,7 @@ class Status(enum.IntFlag):
     UNDERVOLTAGE = 512
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class RowBlock:
     """Consecutive rows of one stream.
 
@@ -69,7 +69,7 @@ class FrameDamaged(ValueError):
     """A row frame whose own lengths contradict each other."""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class RowFrame:
     """A row frame as sent: wrapped counters, not yet placed in time."""
 

@@ -53,9 +53,9 @@ FLOATING, GEARED = 0, 1
 PARAMETERS = 58
 
 # Columns of a bench row.
-(OUT_THETA, OUT_CRANK, OUT_CELL, OUT_BASE_FORCE, OUT_CURRENT, OUT_VOLTAGE, OUT_HEIGHT, OUT_WINDING) = range(8)
-(OUT_OMEGA, OUT_CONTACT, OUT_DRIVE, OUT_TAP) = range(8, 12)
-ROW_COLUMNS = 12
+(OUT_THETA, OUT_CRANK, OUT_CELL, OUT_CURRENT, OUT_VOLTAGE, OUT_HEIGHT, OUT_WINDING) = range(7)
+(OUT_OMEGA, OUT_CONTACT, OUT_DRIVE, OUT_TAP) = range(7, 11)
+ROW_COLUMNS = 11
 
 LONGEST_STEP_S = 2e-4
 #: The hand that holds the body brings it to its angle like a critically damped oscillator.
@@ -64,7 +64,7 @@ GRIP_PER_S = 60.0
 NEAR_STOP_RAD = 0.035
 
 
-@kernel(error_model="numpy")
+@kernel(error_model="numpy", fastmath={"contract", "arcp", "nsz", "reassoc"})
 def _accelerations(  # type: ignore[no-untyped-def]
     carriage, inertia, coupling, weight, a_crank, b_crank, shake, sin_c, cos_c, rate, r1, r2, r3, grip, pull
 ):
@@ -91,7 +91,7 @@ def _accelerations(  # type: ignore[no-untyped-def]
     return (r1 - coupling * up) / inertia, up, turn
 
 
-@kernel(error_model="numpy", fastmath={"contract"})
+@kernel(error_model="numpy", fastmath={"contract", "arcp", "nsz", "reassoc"})
 def rates(x, p, n, mode, volts, ohm, torque, grip, angle, dx):  # type: ignore[no-untyped-def]
     """Time derivatives of the state into `dx[:n]`; returns (force on the base N, grip torque N m).
 
@@ -292,23 +292,27 @@ def rates(x, p, n, mode, volts, ohm, torque, grip, angle, dx):  # type: ignore[n
     return force, inertia * spin + coupling * up - r1
 
 
-@kernel(error_model="numpy", fastmath={"contract"})
+@kernel(error_model="numpy", fastmath={"contract", "arcp", "nsz", "reassoc"})
 def _step(x, p, n, h, mode, volts, ohm, t0, t1, t2, grip, angle, work):  # type: ignore[no-untyped-def]
     """One classical Runge-Kutta step of `h` seconds; t0, t1, t2 torque at its start, middle and end."""
     stage, slope, total = work[0], work[1], work[2]
-    for j in range(n):
+    for j in range(MOTION):
         stage[j] = x[j]
-        total[j] = 0.0
     for k in range(4):
         torque = t0 if k == 0 else (t2 if k == 3 else t1)
         rates(stage, p, n, mode, volts, ohm, torque, grip, angle, slope)
-        share = 1.0 if k == 0 or k == 3 else 2.0
-        reach = h if k == 2 else 0.5 * h
-        for j in range(n):
-            total[j] += share * slope[j]
-            stage[j] = x[j] + reach * slope[j]
+        if k == 0:
+            for j in range(n):
+                total[j] = slope[j]
+                stage[j] = x[j] + 0.5 * h * slope[j]
+        elif k < 3:
+            reach = h if k == 2 else 0.5 * h
+            for j in range(n):
+                total[j] += 2.0 * slope[j]
+                stage[j] = x[j] + reach * slope[j]
+    sixth = h / 6.0
     for j in range(n):
-        x[j] += h / 6.0 * total[j]
+        x[j] += sixth * (total[j] + slope[j])
 
 
 @kernel(error_model="numpy")
@@ -337,7 +341,7 @@ def white(seed, slot):  # type: ignore[no-untyped-def]
     return (total - 131070.0) * (1.7320508075688772 / 65536.0)
 
 
-@kernel(error_model="numpy", fastmath={"contract"})
+@kernel(error_model="numpy", fastmath={"contract", "arcp", "nsz", "reassoc"})
 def _stick_slip(r, p, n, h, mode, volts, ohm, torque, t1, t2, work):  # type: ignore[no-untyped-def]
     """A step with Coulomb friction in the hinge that really sticks: events within the step are located.
 
@@ -376,13 +380,16 @@ def _stick_slip(r, p, n, h, mode, volts, ohm, torque, t1, t2, work):  # type: ig
     r[SLIDING] = sense
 
 
-@kernel(error_model="numpy", fastmath={"contract"})
+@kernel(error_model="numpy", fastmath={"contract", "arcp", "nsz", "reassoc"})
 def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
     """Advance the record `r` by len(out) rows of `row_s` seconds; out[k] is the state at the end of row k.
 
     The result does not depend on how rows are grouped into calls.
     """
-    n = STOPS + 1 if p[ENERGIES] > 0.0 else MOTION
+    # Without base and play the states from BASE on stand still.
+    n = MOTION if p[BASE_MASS] > 0.0 or p[PLAY] > 0.0 else BASE
+    if p[ENERGIES] > 0.0:
+        n = STOPS + 1
     work = np.zeros((4, STOPS + 1))
     slots = int(math.ceil(row_s / LONGEST_STEP_S - 1e-9))  # noqa: RUF046  numba's ceil is a float
     slot_s = row_s / slots
@@ -432,17 +439,18 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
         r[ROW] += 1.0
         mode = int(r[MOTOR])
         ohm = p[OHM] * (1.0 + p[COPPER_SLOPE] * (r[WINDING] - 25.0))
-        grip = r[HELD] > 0.0 or (p[STICKING] > 0.0 and r[SLIDING] == 0.0)
-        angle = r[HOLD_ANGLE] if r[HELD] > 0.0 else r[THETA]
-        force, _ = rates(r, p, n, mode, r[DRIVE_V], ohm, 0.0, grip, angle, work[1])
+        shown = r[CELL]
+        if p[CELL_OMEGA] <= 0.0:  # an ideal cell shows the force itself
+            grip = r[HELD] > 0.0 or (p[STICKING] > 0.0 and r[SLIDING] == 0.0)
+            angle = r[HOLD_ANGLE] if r[HELD] > 0.0 else r[THETA]
+            shown, _ = rates(r, p, n, mode, r[DRIVE_V], ohm, 0.0, grip, angle, work[1])
         if p[CARRIAGE] == GEARED:
             r[HEIGHT] = p[SHAKE] * math.sin(r[CRANK])
             r[CLIMB] = p[SHAKE] * math.cos(r[CRANK]) * r[RATE]
         emf = p[TORQUE_CONSTANT] * p[GEAR] * r[RATE]
         out[k, OUT_THETA] = r[THETA]
         out[k, OUT_CRANK] = r[CRANK]
-        out[k, OUT_CELL] = r[CELL] if p[CELL_OMEGA] > 0.0 else force
-        out[k, OUT_BASE_FORCE] = force
+        out[k, OUT_CELL] = shown
         out[k, OUT_CURRENT] = r[CURRENT]
         out[k, OUT_VOLTAGE] = r[DRIVE_V] if mode == DRIVEN else (emf if mode == COASTING else 0.0)
         out[k, OUT_HEIGHT] = r[HEIGHT]
@@ -453,46 +461,3 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
         age = r[TAP_AGE]
         out[k, OUT_TAP] = _tap_torque(r[TAP_IMPULSE], r[TAP_DURATION], age) if age >= 0.0 else 0.0
 
-
-# Sums of one turn of the crank.
-(TURN_PERIOD, TURN_ANGLE, TURN_CURRENT, TURN_SIN, TURN_COS, TURN_SLOWEST) = range(6)
-
-
-@kernel(error_model="numpy", fastmath={"contract"})
-def turn(x, p, volts, ohm, steps, sums):  # type: ignore[no-untyped-def]
-    """Carry the state `x`, given at crank angle 0, through one turn, with the crank angle as clock.
-
-    Fills `sums`: period s, time means of body angle and current, first harmonic of the carriage height
-    (sin and cos of the crank), slowest crank rate met.
-    """
-    h = 2.0 * math.pi / steps
-    slope, stage, total = np.zeros(MOTION), np.zeros(MOTION), np.zeros(MOTION)
-    x[CRANK] = 0.0
-    sums[:] = 0.0
-    sums[TURN_SLOWEST] = x[RATE]
-    for k in range(steps):
-        stage[:] = x[:MOTION]
-        total[:] = 0.0
-        for s in range(4):
-            rates(stage, p, MOTION, DRIVEN, volts, ohm, 0.0, False, 0.0, slope)
-            per = 1.0 / max(stage[RATE], 1e-3)
-            share = 1.0 if s == 0 or s == 3 else 2.0
-            reach = h if s == 2 else 0.5 * h
-            for j in range(MOTION):
-                total[j] += share * slope[j] * per
-                stage[j] = x[j] + reach * slope[j] * per
-            # Rectangle rule at the nodes: exact to high order for a periodic orbit.
-            if s == 0:
-                sin_c, cos_c = math.sin(x[CRANK]), math.cos(x[CRANK])
-                height = p[SHAKE] * sin_c if p[CARRIAGE] == GEARED else x[HEIGHT]
-                sums[TURN_PERIOD] += h * per
-                sums[TURN_ANGLE] += h * per * x[THETA]
-                sums[TURN_CURRENT] += h * per * x[CURRENT]
-                sums[TURN_SIN] += h * height * sin_c / math.pi
-                sums[TURN_COS] += h * height * cos_c / math.pi
-        for j in range(MOTION):
-            x[j] += h / 6.0 * total[j]
-        x[CRANK] = h * (k + 1)
-        sums[TURN_SLOWEST] = min(sums[TURN_SLOWEST], x[RATE])
-    sums[TURN_ANGLE] /= sums[TURN_PERIOD]
-    sums[TURN_CURRENT] /= sums[TURN_PERIOD]

@@ -8,7 +8,7 @@
     rows = plant.advance(20)         # float64 (20, ROW_COLUMNS); row k is the state at its END
 
 Columns OUT_* are exported here: body angle rad, crank angle rad (unwrapped), force shown by the load
-cell N (resonance included, no noise), force on the base N, motor current A, terminal voltage V (open
+cell N (resonance included, no noise), motor current A, terminal voltage V (open
 terminals show the back EMF), carriage height m, winding degC, body rate rad/s, 1.0 where an end stop was
 touched during the row, drive register V, tapper torque N m.
 Commands take effect at the start of the next row. The result depends on the commands' rows and the seed,
@@ -25,7 +25,6 @@ from analysis.mechanism.equations import (
     BRAKING,
     COASTING,
     DRIVEN,
-    OUT_BASE_FORCE,
     OUT_CELL,
     OUT_CONTACT,
     OUT_CRANK,
@@ -46,7 +45,6 @@ __all__ = [
     "BRAKING",
     "COASTING",
     "DRIVEN",
-    "OUT_BASE_FORCE",
     "OUT_CELL",
     "OUT_CONTACT",
     "OUT_CRANK",
