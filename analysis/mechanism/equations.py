@@ -57,10 +57,10 @@ PARAMETERS = 58
 (OUT_OMEGA, OUT_CONTACT, OUT_DRIVE, OUT_TAP) = range(7, 11)
 ROW_COLUMNS = 11
 
-LONGEST_STEP_S = 2e-4
+LONGEST_STEP_S = 2.5e-4
 #: The hand that holds the body brings it to its angle like a critically damped oscillator.
 GRIP_PER_S = 60.0
-#: Within this of an end stop the step is halved: the stops are stiff.
+#: Within this of an end stop the step is a third: the stops are stiff, and ask for 1e-4 s or less.
 NEAR_STOP_RAD = 0.035
 
 
@@ -408,7 +408,7 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
                 r[CURRENT] = 0.0
             push = noise * white(p[SEED], first + s) if noise > 0.0 else 0.0
             gap = min(r[THETA] - p[STOP_LOW], p[STOP_HIGH] - r[THETA]) - abs(r[OMEGA]) * slot_s
-            parts = 2 if always_fine or gap < NEAR_STOP_RAD else 1
+            parts = 3 if always_fine or gap < NEAR_STOP_RAD else 1
             h = slot_s / parts
             ohm = p[OHM] * (1.0 + p[COPPER_SLOPE] * (r[WINDING] - 25.0))
             volts = 0.5 * (drive + r[DRIVE_V])
@@ -460,4 +460,3 @@ def advance(r, p, row_s, out):  # type: ignore[no-untyped-def]
         out[k, OUT_DRIVE] = r[DRIVE_V]
         age = r[TAP_AGE]
         out[k, OUT_TAP] = _tap_torque(r[TAP_IMPULSE], r[TAP_DURATION], age) if age >= 0.0 else 0.0
-

@@ -48,7 +48,7 @@ def test_against_dop853() -> None:
         found = solve_ivp(
             right, (0.0, 0.5), start[: eq.MOTION], "DOP853", times, rtol=1e-10, atol=1e-12, max_step=1e-3
         )
-        np.testing.assert_allclose(rows[:, OUT_THETA], found.y[eq.THETA], rtol=0.0, atol=math.radians(2e-3))
+        np.testing.assert_allclose(rows[:, OUT_THETA], found.y[eq.THETA], rtol=0.0, atol=math.radians(5e-3))
         np.testing.assert_allclose(rows[:, OUT_CRANK], found.y[eq.CRANK], rtol=0.0, atol=2e-3)
 
 
