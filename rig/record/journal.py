@@ -120,9 +120,9 @@ class JournalWriter:
 
     def flush(self) -> None:
         """Hand everything to the operating system."""
+        self._refuse_after_failure()
         if not self._buffer:
             return
-        self._refuse_after_failure()
         data = bytes(self._buffer)
         self._buffer.clear()
         sent = 0

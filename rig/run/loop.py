@@ -113,6 +113,7 @@ class Loop:
         self._overruns: int | None = None
         self._verdicts: list[Verdict] = []
         self._trips: list[Trip] = []
+        self._done: list[Event] = []
         self._outcome: RunOutcome | None = None
         self._signals = HaltSignals()
         self._signal_told = False
@@ -168,7 +169,8 @@ class Loop:
             verdicts = self._verdicts + self._analyst.feed([block], events)
             self._verdicts = []
             operator = self._inputs()
-            commands = self.runner.advance(block, self.interlocks.flap_hz, verdicts, trips, operator)
+            done, self._done = self._done, []
+            commands = self.runner.advance(block, self.interlocks.flap_hz, verdicts, trips, operator, done)
             for command in commands:
                 self._carry_out(command)
             if self._progress is not None:
@@ -249,7 +251,9 @@ class Loop:
                 self._finish(command.exit_code, command.reason)
                 return
         if command.kind:
-            self._event(Event(tick, command.kind, data))
+            event = Event(tick, command.kind, data)
+            self._done.append(event)
+            self._event(event)
 
     # -- ends ------------------------------------------------------------------------------------------
 

@@ -10,6 +10,7 @@ from typing import Any
 from drivers.channels import ChannelTable
 from drivers.rows import RowBlock, Status
 from rig.description import RigDescription
+from rig.events import Event
 from rig.run import actions as ac
 from rig.run import commands as cm
 from rig.run.inputs import OperatorInput
@@ -95,9 +96,13 @@ class Walker:
         flap_hz: float,
         verdicts: Sequence[Verdict],
         operator: Sequence[OperatorInput],
+        done: Sequence[Event] = (),
     ) -> list[cm.Command]:
         """Commands after one frame."""
         self._tick = tick
+        for event in done:
+            if event.kind == "release":  # let go only now: the observation begins here
+                self._begun = event.tick
         self._known.listen(verdicts)
         if self._known.answered:
             self._asked_tick = None

@@ -28,6 +28,7 @@ from drivers.channels import ChannelTable
 from drivers.contract import Halt
 from drivers.rows import RowBlock, Status
 from rig.description import RigDescription
+from rig.events import Event
 from rig.run import commands as cm
 from rig.run.course import course
 from rig.run.inputs import OperatorInput
@@ -77,8 +78,13 @@ class Runner:
         verdicts: Sequence[Verdict] = (),
         trips: Sequence[Trip] = (),
         operator: Sequence[OperatorInput] = (),
+        done: Sequence[Event] = (),
     ) -> list[cm.Command]:
-        """Commands after one frame of rows; `flap_hz` is the crank's present rate."""
+        """Commands after one frame of rows.
+
+        `flap_hz` is the crank's present rate; `done` are the events the last commands became, with the ticks
+        at which they took effect.
+        """
         tick = int(block.tick[-1])
         if self.state == FINISHED:
             return []
@@ -91,7 +97,7 @@ class Runner:
             self.state = RUNNING
             made.append(cm.Record("run", {"rig": self.rig.name, "protocol": self._protocol.name}))
         if self.state == RUNNING:
-            made += self._walker.advance(block, tick, flap_hz, verdicts, operator)
+            made += self._walker.advance(block, tick, flap_hz, verdicts, operator, done)
             if not self._walker.done:
                 return made
             return made + self._end(tick)

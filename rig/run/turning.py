@@ -6,13 +6,16 @@ from collections import deque
 
 #: Longest history looked back over: below one turn in this time the rate is told from what there is.
 LONGEST_S = 1.0
+#: A count is garbled when it lies this many times as far off as its successor, and by this part of a turn.
+FAR, PART = 3, 0.25
 
 
 class TurnCounter:
     """Flap rate from encoder counts at the ends of frames.
 
-    A rate over less than a turn would show the ripple of the crank within its turn. The median of the last
-    three is told, so that one garbled count neither trips a limit nor looks like a crank at rest.
+    A rate over less than a turn would show the ripple of the crank within its turn. A count is believed when
+    its successor agrees, one frame later, so that a single garbled one neither trips a limit nor looks like a
+    crank at rest; an encoder that has slipped for good is believed.
     """
 
     def __init__(self, counts_per_turn: float, tick_hz: int) -> None:
@@ -21,31 +24,37 @@ class TurnCounter:
         self._counts = counts_per_turn
         self._tick_hz = tick_hz
         self._history: deque[tuple[int, int]] = deque()
-        self._last: deque[float] = deque(maxlen=3)
+        self._waiting: tuple[int, int] | None = None
         self.flap_hz = 0.0
 
     def add(self, tick: int, count: int) -> float:
         """Take the count at a tick; the flap rate in Hz, without sign."""
+        waiting = self._waiting
+        if waiting is not None:
+            if tick <= waiting[0]:
+                return self.flap_hz
+            if not self._garbled(waiting[1], count):
+                self._believe(*waiting)
+        self._waiting = (tick, count)
+        return self.flap_hz
+
+    def _garbled(self, count: int, successor: int) -> bool:
+        if not self._history:
+            return False
+        last = self._history[-1][1]
+        return abs(count - last) > FAR * abs(successor - last) + PART * self._counts
+
+    def _believe(self, tick: int, count: int) -> None:
         history = self._history
-        if history and tick <= history[-1][0]:
-            return self.flap_hz
         history.append((tick, count))
         longest = LONGEST_S * self._tick_hz
         while len(history) > 2 and tick - history[1][0] >= longest:
             history.popleft()
-        for before_tick, before_count in reversed(history):
-            turned = abs(count - before_count)
-            if turned >= self._counts:
-                return self._tell(turned, tick - before_tick)
-        first_tick, first_count = history[0]
-        return self._tell(abs(count - first_count), tick - first_tick) if tick > first_tick else self.flap_hz
-
-    def _tell(self, turned: int, ticks: int) -> float:
-        self._last.append(turned / self._counts * self._tick_hz / ticks)
-        self.flap_hz = sorted(self._last)[len(self._last) // 2]
-        return self.flap_hz
-
-    @property
-    def history_s(self) -> float:
-        """How far back the present history reaches."""
-        return (self._history[-1][0] - self._history[0][0]) / self._tick_hz if self._history else 0.0
+        before_tick, before_count = history[0]
+        for one_tick, one_count in reversed(history):
+            if abs(count - one_count) >= self._counts:
+                before_tick, before_count = one_tick, one_count
+                break
+        if tick > before_tick:
+            turned = abs(count - before_count) / self._counts
+            self.flap_hz = turned * self._tick_hz / (tick - before_tick)
