@@ -28,7 +28,8 @@ def pack(
 ) -> eq.Vector:
     """Parameter vector for `equations`, shape (PARAMETERS,).
 
-    `energies` asks for the energy accumulators, `always_fine` for the fine steps of the end stops (0.8e-4 s) everywhere.
+    `energies` asks for the energy accumulators, `always_fine` for the fine steps of the end stops (0.8e-4 s)
+    everywhere.
     ValueError for constants that make no mechanism (no inertia, no resistance, a base without spring).
     """
     m, d = mechanism, disturbance or Disturbance()
