@@ -13,12 +13,16 @@ from analysis.floquet.turn import Turn
 from analysis.mechanism.parameters import Carriage, Mechanism
 from analysis.mechanism.steady import drive_for_flap_v, steady_flap_hz
 
+#: Steps along the branch at most, and the longest of them.
+WALK = 80
+FARTHEST_STRIDE_RAD = 0.05
+
 
 @dataclass(frozen=True)
 class FloquetBoundary:
     """Where the held orbit ends: flap rate Hz, drive V, kind "fold", "pitchfork" or "flutter".
 
-    angle_rad: body angle on the section there. For a prescribed crank rate the drive is NaN.
+    angle_rad: body angle there with the crank at -90 deg, rad. For a prescribed crank rate the drive is NaN.
     """
 
     flap_hz: float
@@ -41,16 +45,17 @@ class FloquetMode:
 
 
 def boundary_by_floquet(mechanism: Mechanism, winding_deg_c: float = 25.0) -> FloquetBoundary | None:
-    """Boundary of the complete model from above; None if nothing holds the body (clamped carriage).
+    """Boundary of the complete model from above; None if nothing holds the body (clamped carriage) or
+    nothing needs to (centre of mass below the pivot).
 
     With lift the orbit ends in a fold, found as the least drive along the branch that is followed in the section
     angle; without, at the drive where the slow stiffness is zero (pitchfork); and before either where its decay
     rate goes through zero (flutter).
     """
     averaged = averaged_fold(mechanism)
-    if averaged is None or mechanism.carriage is Carriage.CLAMPED:
+    if averaged is None or mechanism.cm_height_m <= 0.0:
         return None
-    turn = Turn(mechanism, winding_deg_c)
+    turn = Turn(mechanism, winding_deg_c, averaged.flap_hz)
     if lift_torque_n_m(mechanism, averaged.flap_hz) == 0.0:
         found = _pitchfork(mechanism, turn, averaged.flap_hz, winding_deg_c)
     else:
@@ -62,7 +67,10 @@ def boundary_by_floquet(mechanism: Mechanism, winding_deg_c: float = 25.0) -> Fl
 
 def mode_at_voltage(mechanism: Mechanism, drive_v: float, winding_deg_c: float = 25.0) -> FloquetMode | None:
     """Slow mode of the held orbit at a drive; None below the boundary."""
-    turn = Turn(mechanism, winding_deg_c)
+    flap = steady_flap_hz(mechanism, drive_v, winding_deg_c)[0]
+    if flap <= 0.0:
+        return None
+    turn = Turn(mechanism, winding_deg_c, flap)
     orbit = _held(mechanism, turn, drive_v, winding_deg_c)
     if orbit is None:
         return None
@@ -134,44 +142,47 @@ def _held(mechanism: Mechanism, turn: Turn, drive_v: float, winding_deg_c: float
 
 
 def _fold(mechanism: Mechanism, turn: Turn, flap_hz: float, winding_deg_c: float) -> FloquetBoundary | None:
-    """Least drive along the branch, by successive parabolas in the section angle."""
-    start = 1.08 * flap_hz
-    guess, volts = _guess(mechanism, turn, start, winding_deg_c)
-    orbit = at_drive(turn, guess, volts)
-    if orbit is None:
-        return None
-    centre = math.atan2(mechanism.cm_forward_m, mechanism.cm_height_m)
-    step = 0.1 * (orbit.state[0] - centre)
-    trail = [orbit]
-    while len(trail) < 60:  # walk towards larger angles until the drive rises again
-        following = at_angle(turn, trail[-1].state, trail[-1].drive_v, trail[-1].state[0] + step)
-        if following is None:
-            return None
-        trail.append(following)
-        if following.drive_v > trail[-2].drive_v:
+    """Least drive along the branch: walk in the section angle until the drive rises, then find its zero slope."""
+    from scipy.optimize import brentq
+
+    last = None
+    for share in (1.08, 1.15, 1.3):
+        guess, volts = _guess(mechanism, turn, share * flap_hz, winding_deg_c)
+        last = at_drive(turn, guess, volts)
+        if last is not None and slow_mode(turn, last).stiffness_per_s2 > 0.0:
             break
+    if last is None:
+        return None
+    step = 0.1 * (float(last.state[0]) - math.atan2(mechanism.cm_forward_m, mechanism.cm_height_m))
+    sense = math.copysign(1.0, step)
+    for _ in range(WALK):
+        following = at_angle(turn, last.state, last.drive_v, float(last.state[0]) + step)
+        if following is None:
+            step *= 0.5
+        elif sense * following.drive_slope > 0.0:
+            break
+        else:
+            # A body that is hardly biased starts within a hair of upright: stride out.
+            last, step = following, sense * min(abs(1.3 * step), FARTHEST_STRIDE_RAD)
     else:
         return None
-    if len(trail) < 3:
-        return None
-    points = trail[-3:]
-    for _ in range(8):
-        angles = np.array([point.state[0] for point in points])
-        drives = np.array([point.drive_v for point in points])
-        curve = np.polyfit(angles - angles[1], drives - drives[1], 2)
-        if curve[0] <= 0.0:
-            return None
-        best = float(angles[1] - curve[1] / (2.0 * curve[0]))
-        nearest = min(points, key=lambda point: abs(point.state[0] - best))
-        found = at_angle(turn, nearest.state, nearest.drive_v, best)
+    near = last
+
+    def slope(angle_rad: float) -> float:
+        nonlocal near
+        found = at_angle(turn, near.state, near.drive_v, angle_rad)
         if found is None:
-            return None
-        points = sorted([*points, found], key=lambda point: point.drive_v)[:3]
-        points.sort(key=lambda point: float(point.state[0]))
-        if abs(best - nearest.state[0]) < 1e-5:
-            break
-    lowest = min(points, key=lambda point: point.drive_v)
-    return FloquetBoundary(lowest.flap_hz, lowest.drive_v, "fold", float(lowest.state[0]))
+            return math.nan
+        near = found
+        return found.drive_slope
+
+    ends = float(last.state[0]), float(following.state[0])
+    if not slope(ends[0]) * slope(ends[1]) < 0.0:
+        return None
+    found = at_angle(turn, near.state, near.drive_v, float(brentq(slope, *ends, xtol=1e-7)))
+    if found is None:
+        return None
+    return FloquetBoundary(found.flap_hz, found.drive_v, "fold", float(found.state[0]))
 
 
 def _pitchfork(

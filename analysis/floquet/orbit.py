@@ -23,11 +23,15 @@ CLOSE = 1e-9
 
 @dataclass(frozen=True)
 class Orbit:
-    """A periodic orbit: its state on the section, the drive, and the time of a turn."""
+    """A periodic orbit: its state on the section, the drive, the time of a turn.
+
+    `drive_slope`, V/rad, where the orbit was found by its angle: change of drive along the branch.
+    """
 
     state: Vector
     drive_v: float
     turn_s: float
+    drive_slope: float = math.nan
 
     @property
     def flap_hz(self) -> float:
@@ -79,15 +83,16 @@ def at_angle(turn: Turn, guess: Vector, drive_v: float, angle_rad: float) -> Orb
         left = after - z
         if not np.all(np.isfinite(left)):
             return None
-        if float(np.max(np.abs(left / turn.scale))) < CLOSE:
-            return Orbit(z, drive_v, time)
         slopes, by_volts = turn.slopes(z, drive_v)
         matrix = slopes - np.eye(turn.size)
+        by_angle = matrix[:, 0].copy()
         matrix[:, 0] = by_volts  # the angle is given, the drive is free
         try:
-            step = np.linalg.solve(matrix, -left)
+            step, along = np.linalg.solve(matrix, -np.column_stack([left, by_angle])).T
         except np.linalg.LinAlgError:
             return None
+        if float(np.max(np.abs(left / turn.scale))) < CLOSE:
+            return Orbit(z, drive_v, time, float(along[0]))
         scaled = step / turn.scale
         scaled[0] = step[0]
         step = step * min(1.0, 0.3 / max(float(np.max(np.abs(scaled))), 1e-12))

@@ -15,13 +15,13 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from analysis.kernel import kernel
 from analysis.mechanism import equations as eq
 from analysis.mechanism.packing import pack
 from analysis.mechanism.parameters import Carriage, Mechanism
 
 Vector = NDArray[np.float64]
 
+#: Steps of a turn, more where the current of a slow crank's motor would not be resolved.
 STEPS = 400
 SECTION_RAD = -0.5 * math.pi
 #: Differences for derivatives, per state: large against rounding, small against curvature.
@@ -29,44 +29,20 @@ SCALES = {eq.THETA: 1.0, eq.OMEGA: 10.0, eq.HEIGHT: 0.01, eq.CLIMB: 1.0, eq.RATE
 DIFFERENCE = 1e-6
 
 
-@kernel(error_model="numpy")
-def _turn(x, p, volts, ohm, steps):  # type: ignore[no-untyped-def]
-    """Advance the state `x` by one crank turn with RK4 in the crank angle; returns the time it took."""
-    n = eq.MOTION
-    k1, k2, k3, k4 = np.zeros(n), np.zeros(n), np.zeros(n), np.zeros(n)
-    y = np.zeros(n)
-    h = 2.0 * math.pi / steps
-    time = 0.0
-    for _ in range(steps):
-        eq.rates(x, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k1)
-        d1 = 1.0 / x[eq.RATE]
-        for j in range(n):
-            y[j] = x[j] + 0.5 * h * k1[j] * d1
-        eq.rates(y, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k2)
-        d2 = 1.0 / y[eq.RATE]
-        for j in range(n):
-            y[j] = x[j] + 0.5 * h * k2[j] * d2
-        eq.rates(y, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k3)
-        d3 = 1.0 / y[eq.RATE]
-        for j in range(n):
-            y[j] = x[j] + h * k3[j] * d3
-        eq.rates(y, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k4)
-        d4 = 1.0 / y[eq.RATE]
-        for j in range(n):
-            x[j] += h / 6.0 * (k1[j] * d1 + 2.0 * k2[j] * d2 + 2.0 * k3[j] * d3 + k4[j] * d4)
-        time += h / 6.0 * (d1 + 2.0 * d2 + 2.0 * d3 + d4)
-    return time
-
-
 class Turn:
-    """The turn map of one mechanism at one winding temperature. End stops take no part: they are moved away."""
+    """The turn map of one mechanism at one winding temperature. End stops take no part: they are moved away.
 
-    def __init__(self, mechanism: Mechanism, winding_deg_c: float = 25.0) -> None:
+    `flap_hz` is roughly where it will be used; it sets the steps of a turn.
+    """
+
+    def __init__(self, mechanism: Mechanism, winding_deg_c: float, flap_hz: float) -> None:
         far = mechanism.with_(stop_low_rad=-1e3, stop_high_rad=1e3)
         self.parameters = pack(far)
         self.ohm = mechanism.motor_resistance_ohm * (
             1.0 + mechanism.copper_coefficient_per_k * (winding_deg_c - 25.0)
         )
+        henry = float(self.parameters[eq.HENRY])
+        self.steps = max(STEPS, math.ceil(self.ohm / henry / (1.2 * flap_hz))) if henry > 0.0 else STEPS
         states = [eq.THETA, eq.OMEGA]
         if mechanism.carriage is Carriage.FLOATING:
             states += [eq.HEIGHT, eq.CLIMB]
@@ -85,7 +61,7 @@ class Turn:
         x = np.zeros(eq.RECORD)
         x[self.states] = z
         x[eq.CRANK] = SECTION_RAD
-        time = float(_turn(x, self.parameters, volts, self.ohm, STEPS))
+        time = float(eq.turn_crank(x, self.parameters, volts, self.ohm, 2.0 * math.pi, self.steps))
         return x[self.states], time
 
     def slopes(self, z: Vector, volts: float) -> tuple[Vector, Vector]:
@@ -109,27 +85,10 @@ class Turn:
         x[self.states] = z
         x[eq.CRANK] = SECTION_RAD
         angles, heights, time = [], [], 0.0
-        part = self.parameters
+        part, steps = 2.0 * math.pi / points, math.ceil(self.steps / points)
         for _ in range(points):
             angles.append(x[eq.THETA])
             heights.append(x[eq.HEIGHT])
-            time += float(_part(x, part, volts, self.ohm, 4, 2.0 * math.pi / points))
+            time += float(eq.turn_crank(x, self.parameters, volts, self.ohm, part, steps))
         return float(np.mean(angles)), 0.5 * float(np.ptp(heights)), time
 
-
-@kernel(error_model="numpy")
-def _part(x, p, volts, ohm, steps, angle):  # type: ignore[no-untyped-def]
-    """A part of a turn, by the midpoint rule: only for means."""
-    n = eq.MOTION
-    k, y = np.zeros(n), np.zeros(n)
-    h = angle / steps
-    time = 0.0
-    for _ in range(steps):
-        eq.rates(x, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k)
-        for j in range(n):
-            y[j] = x[j] + 0.5 * h * k[j] / x[eq.RATE]
-        eq.rates(y, p, n, eq.DRIVEN, volts, ohm, 0.0, False, 0.0, k)
-        for j in range(n):
-            x[j] += h * k[j] / y[eq.RATE]
-        time += h / y[eq.RATE]
-    return time

@@ -10,8 +10,9 @@ from analysis.mechanism import equations as eq
 from analysis.mechanism.disturbance import Disturbance
 from analysis.mechanism.parameters import Mechanism
 
-#: A motor quicker than this (L/R) has its current follow the voltage at once.
-QUICK_MOTOR_S = 1.25e-4
+#: A motor quicker than this (L/R) has its current follow the voltage at once: the longest step would have to
+#: resolve it, and a hot winding is quicker still.
+QUICK_MOTOR_S = 1.6e-4
 #: A load cell that rings faster than this shows the force itself.
 STIFF_CELL_HZ = 1000.0
 #: Contact of a wing that has play: stiff against the wing's inertia, soft enough for the step.
