@@ -38,6 +38,8 @@ def bench_for(rig: RigDescription, clock: Clock) -> Bench:
 
     BenchMisuse if the rig names no driver known here or cannot be simulated.
     """
+    if rig.driver == "none":
+        raise BenchMisuse(f"{rig.name} has no driver: it is described for analysis only")
     if rig.driver != "simulated":
         raise BenchMisuse(f"no driver is called {rig.driver!r}; this version knows 'simulated'")
     if rig.mechanism is None:

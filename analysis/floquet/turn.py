@@ -91,4 +91,3 @@ class Turn:
             heights.append(x[eq.HEIGHT])
             time += float(eq.turn_crank(x, self.parameters, volts, self.ohm, part, steps))
         return float(np.mean(angles)), 0.5 * float(np.ptp(heights)), time
-

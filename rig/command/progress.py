@@ -32,7 +32,7 @@ class RunProgress:
         )
         self._task = self._bar.add_task("starting", total=max(duration_s, 1.0))
         self._next_s = 0.0
-        self._level = -1
+        self._began: dict[int, str] = {}  # when, which way and at what drive each level began
 
     def __enter__(self) -> RunProgress:
         self._bar.start()
@@ -48,10 +48,10 @@ class RunProgress:
             if isinstance(verdict, TapVerdict) and not verdict.accepted and verdict.returned:
                 self._console.print(f"  tap {verdict.tap} left out: {verdict.reason}")
             elif isinstance(verdict, LevelVerdict) and verdict.regime in ("stable", "unstable"):
-                self._console.print(f"  level {verdict.level}: {verdict.regime}, {verdict.state}")
-        if standing.level != self._level and standing.level >= 0:
-            self._level = standing.level
-            self._console.print(f"{time_s:7.1f} s  {standing.direction} {standing.drive_v:.2f} V")
+                state = verdict.state.replace("_", " ")
+                self._console.print(f"{self._began.get(verdict.level, '')}: {verdict.regime}, {state}")
+        if standing.level >= 0 and standing.level not in self._began:
+            self._began[standing.level] = f"{time_s:7.1f} s  {standing.direction} {standing.drive_v:.2f} V"
         if self._live and time_s >= self._next_s:
             self._next_s = time_s + UPDATE_S
             words = f"{standing.direction} {standing.drive_v:.2f} V, {standing.body or 'waiting'}"

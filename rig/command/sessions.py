@@ -97,7 +97,9 @@ def run_session(
     analyst = Analyst(rig, hello.channels, hello.tick_hz)
     ended = False
     try:
-        outcome = Loop(bench, hello, rig, protocol, journal, analyst, clock, progress, operator).run()
+        outcome = Loop(
+            bench, hello, rig, protocol, journal, analyst, clock, progress, operator, by=acknowledged_by
+        ).run()
         bench.close()
         result = analyst.finish()
         fields = result.to_json()

@@ -29,7 +29,8 @@ from rig.files.table import Table
 from rig.files.world import read_world
 from rig.problem import FileProblems, Problem
 
-DRIVERS = ("simulated",)
+#: "none": a rig described for analysis only, its constants may be unknown.
+DRIVERS = ("simulated", "none")
 HIGHEST_V = 60.0
 ABOVE_60_V = (
     "at most 60 V DC: 60 V DC, ripple-free and dry, limits shock risk only (IEC 61010-1, IEC 60204-1 PELV; 35 V wet; "

@@ -109,6 +109,22 @@ def test_a_script_with_h5py_alone_can_redo_the_flap_rate(session: Path) -> None:
     assert analysed(session)["levels"][2]["flap_hz"]["value"] == pytest.approx(by_hand, rel=1e-4)
 
 
+def test_unknown_constants_are_not_testable(session: Path, tmp_path: Path) -> None:
+    text = find("boom").read_text(encoding="utf-8")
+    rig = tmp_path / "unknown.toml"
+    text = text.replace('driver = "simulated"', 'driver = "none"')
+    rig.write_text(
+        text.replace('body_inertia = "1541.6 g cm^2"', 'body_inertia = "unknown"'), encoding="utf-8"
+    )
+    done = haltere("analyse", str(session), "--json", "--rig", str(rig))
+    assert done.returncode == 0, done.stderr
+    told = json.loads(done.stdout)
+    assert told["theory"]["floquet_hz"] is None and "body_inertia" in told["theory"]["reason"]
+    assert told["vibration"]["verdict"] == "not_testable"
+    words = ("--out", str(tmp_path / "x.h5"), "--acknowledge", "A. Person")
+    assert haltere("run", "quick", "--rig", str(rig), *words).returncode == 4
+
+
 def test_report_is_one_page_without_network(session: Path) -> None:
     page = session.with_suffix(".html").read_text(encoding="utf-8")
     assert not re.search(r"(src|href)=[\"']?(https?:)?//", page)

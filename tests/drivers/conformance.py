@@ -101,7 +101,7 @@ class BenchConformance:
 
     @pytest.fixture
     def bench(self) -> Bench:
-        raise NotImplementedError("override this fixture with the bench under test")
+        pytest.fail("override this fixture with the bench under test")
 
     @pytest.fixture
     def owner(self, bench: Bench) -> Iterator[Owner]:
