@@ -6,6 +6,13 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 
+def printable(text: str) -> str:
+    """Text as one line, with escapes for whatever would move a cursor or hide in a terminal."""
+    return "".join(
+        letter if letter.isprintable() else letter.encode("unicode_escape").decode() for letter in text
+    )
+
+
 @dataclass(frozen=True)
 class Problem:
     """One mistake: where it is, what stands there, and what was expected.
@@ -22,8 +29,9 @@ class Problem:
     def __str__(self) -> str:
         place = f"{self.file}:{self.line}" if self.line else self.file
         key = f" {self.key}" if self.key else ""
-        value = f" = {self.value}" if self.value else ""
-        return f"{place}:{key}{value}: expected {self.expected}"
+        value = f" = {self.value}" if self.value and self.key else f" {self.value}" if self.value else ""
+        what = f"{key}{value}:" if key or value else ""
+        return printable(f"{place}:{what} expected {self.expected}")
 
 
 class FileProblems(Exception):

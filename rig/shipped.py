@@ -20,9 +20,12 @@ def shipped_files() -> list[str]:
 
 
 def find(name_or_path: str | Path) -> Path:
-    """The file of that path, or else the shipped one of that name; the path itself if there is neither."""
+    """The file of that path, or else the shipped one of that name; the path itself if there is neither.
+
+    A folder of that name (an earlier run's, say) does not hide the shipped file.
+    """
     path = Path(name_or_path)
-    if path.exists() or len(path.parts) > 1:
+    if len(path.parts) > 1 or (path.exists() and not path.is_dir()):
         return path
     shipped = shipped_folder() / (path.name if path.suffix == ".toml" else f"{path.name}.toml")
     return shipped if shipped.is_file() else path

@@ -8,6 +8,7 @@ from collections.abc import Iterator, Sequence
 from rig.description import RigDescription
 from rig.files.lines import Document, Path_
 from rig.files.table import shown
+from rig.files.voltage import HIGHEST_V
 from rig.problem import Problem
 from rig.steps import Hold, Ramp, Release, Repeat, Staircase, Step, Sync, Tap
 
@@ -91,6 +92,8 @@ def _is_reference(step: Staircase, level: float) -> bool:
 
 
 def _voltage(rig: RigDescription, key: str, volts: float) -> Iterator[tuple[str, object, str]]:
+    if volts > HIGHEST_V:
+        return  # told by the reader already
     if volts > rig.limits.voltage_v:
         yield key, f"{volts:g} V", f"at most the rig's limit of {rig.limits.voltage_v:g} V"
 

@@ -11,11 +11,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from analysis.averaged import averaged_fold, decay_per_s, equilibrium
+from analysis.averaged import equilibrium
 from analysis.mechanism.parameters import Mechanism
 from analysis.mechanism.steady import load_torque_n_m, steady_flap_hz
-from analysis.planning import planned_decay_std
 from rig.description import RigDescription
+from rig.files.precision import planned_half_width_per_s
 from rig.run import actions as ac
 from rig.run.course import course
 from rig.run.winding import WindingModel
@@ -96,7 +96,7 @@ class _Walk:
         start = rig.world.winding_start_deg_c if rig.world is not None else None
         self._winding = WindingModel(rig.motor, rig.limits.winding_deg_c, start) if rig.motor else None
         self.hottest = self._winding.winding_deg_c if self._winding else None
-        self._open: tuple[ac.BeginLevel, float, list[float]] | None = None
+        self._open: tuple[ac.BeginLevel, float, list[tuple[float, float]]] | None = None
 
     def take(self, action: ac.Action) -> None:
         match action:
@@ -112,11 +112,14 @@ class _Walk:
             case ac.Wait() | ac.Watch():
                 self._pass(action.for_s)
             case ac.Settle():
-                self._pass(0.5 * (action.least_s + action.most_s), action.most_s)
+                least = action.least_s if self._held else action.most_s
+                self._pass(least, action.most_s)
             case ac.Strike():
-                self._tap(action.impulse_n_m_s, action.observe_s)
+                # A body that is not held is not tapped, but for a few tries to capture it.
+                skipped = action.planned and not self._held
+                self._tap(action.impulse_n_m_s, action.observe_s, skipped)
             case ac.StrikeUntilPrecise():
-                self._tap(action.impulse_n_m_s, action.observe_s, action.most_s)
+                self._tap(action.impulse_n_m_s, action.observe_s, not self._held, action.most_s)
             case ac.LetGo():
                 self._pass(action.observe_s + 0.5)
             case ac.ReadZero():
@@ -128,7 +131,7 @@ class _Walk:
         """End the level that is open."""
         if self._open is None:
             return
-        begun, start_s, windows = self._open
+        begun, start_s, taps = self._open
         self._open = None
         flap = amps = None
         hot = self._winding.winding_deg_c if self._winding else 25.0
@@ -147,15 +150,23 @@ class _Walk:
                 flap,
                 amps,
                 self._winding.winding_deg_c if self._winding else None,
-                len(windows) // 2,
-                self._precision(flap, windows),
+                len(taps),
+                planned_half_width_per_s(self.rig, flap, taps) if flap else None,
             )
         )
 
-    def _tap(self, impulse: float, observe_s: float, most_s: float | None = None) -> None:
-        if self._open is not None:
-            self._open[2].extend((abs(impulse), observe_s))
-        self._pass(observe_s, most_s)
+    @property
+    def _held(self) -> bool:
+        """Whether theory has the body held at the present drive; taken as held where it cannot be told."""
+        if self._mechanism is None:
+            return True
+        hot = self._winding.winding_deg_c if self._winding else 25.0
+        return equilibrium(self._mechanism, steady_flap_hz(self._mechanism, self.drive_v, hot)[0]) is not None
+
+    def _tap(self, impulse: float, observe_s: float, skipped: bool, most_s: float | None = None) -> None:
+        if self._open is not None and not skipped:
+            self._open[2].append((impulse, observe_s))
+        self._pass(0.0 if skipped else observe_s, observe_s if most_s is None else most_s)
 
     def _ramp_current(self, action: ac.GoTo) -> None:
         """Extra current to speed the flywheel up: J dOmega/dt over the motor's constant."""
@@ -176,9 +187,14 @@ class _Walk:
         self.most_s += time_s if most_s is None else most_s
         if self._winding is None or self._mechanism is None or self.hottest is None:
             return
+        motor = self.rig.motor
+        assert motor is not None
+        slow_s = 0.05 * motor.housing_capacity_j_per_k * motor.housing_ambient_k_per_w
         left = time_s
         while left > 1e-9:
-            step = min(THERMAL_STEP_S, left)
+            # At a constant drive the winding settles: the longer it lasts, the longer the steps may be.
+            wanted = max(THERMAL_STEP_S, min(0.02 * (time_s - left), slow_s))
+            step = min(wanted, left)
             amps = steady_flap_hz(self._mechanism, self.drive_v, self._winding.winding_deg_c)[1]
             self.hottest = max(self.hottest, self._winding.add(amps**2, step))
             left -= step
@@ -188,39 +204,14 @@ class _Walk:
                 f"the winding would pass {limit:g} degC, about {self.now_s:.0f} s into the run"
             )
 
-    def _precision(self, flap_hz: float | None, windows: list[float]) -> float | None:
-        """Half-width (95 %) of the decay rate from all planned taps; None below the boundary or without taps."""
-        mechanism = self._mechanism
-        if mechanism is None or flap_hz is None or not windows:
-            return None
-        rest = equilibrium(mechanism, flap_hz)
-        fold = averaged_fold(mechanism)
-        if rest is None or fold is None or rest.mode_hz <= 0.0:
-            return None
-        body = next(channel for channel in self.rig.channels if channel.measures == "body angle")
-        noise = math.hypot(body.noise, abs(body.scale) / math.sqrt(12.0))
-        ambient = self.rig.world.body_torque_rms_rad if self.rig.world is not None else 0.0
-        weight = 0.0
-        for impulse, observe_s in zip(windows[::2], windows[1::2], strict=True):
-            amplitude = impulse / mechanism.body_inertia_kg_m2 / (TWO_PI * rest.mode_hz)
-            std = planned_decay_std(
-                amplitude,
-                noise,
-                self.rig.sample_hz,
-                observe_s,
-                max(decay_per_s(mechanism, flap_hz), 1e-3),
-                ambient,
-                observe_s,
-            )
-            weight += 1.0 / std**2
-        return 1.959964 / math.sqrt(weight)
-
 
 def forecast_lines(told: Forecast) -> list[str]:
     """A forecast as lines for a terminal."""
     lines = [f"about {told.duration_s / 60.0:.1f} min, at most {told.at_most_s / 60.0:.1f} min"]
     if told.levels:
-        lines.append("  start s  direction  drive V  flap Hz  current A  winding degC  taps  decay +- 1/s")
+        lines.append(
+            "  start s  direction  drive V  flap Hz  current A  winding degC  taps  decay at best +- 1/s"
+        )
     for level in told.levels:
         cells = (
             f"{level.start_s:9.0f}",
@@ -230,7 +221,7 @@ def forecast_lines(told: Forecast) -> list[str]:
             _cell(level.current_a, 9, 2),
             _cell(level.winding_deg_c, 12, 1),
             f"{level.taps:4d}",
-            _cell(level.decay_half_width_per_s, 12, 3),
+            _cell(level.decay_half_width_per_s, 20, 3),
         )
         lines.append("  ".join(cells))
     if told.top_flap_hz is not None:

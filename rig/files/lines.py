@@ -11,8 +11,10 @@ from rig.problem import FileProblems, Problem
 
 Path_ = tuple[str | int, ...]
 LARGEST_BYTES = 2**20
+DEEPEST = 32
 KEY = r"""(?:[A-Za-z0-9_-]+|"(?:[^"\\]|\\.)*"|'[^']*')"""
 DOTTED = re.compile(rf"\s*({KEY}(?:\s*\.\s*{KEY})*)\s*")
+LONG_NUMBER = re.compile(r"[0-9_]{4300,}")
 PLACE = re.compile(r"\s*\(at (?:line (\d+), column \d+|end of document)\)")
 
 
@@ -45,9 +47,11 @@ def read_text(path: str | Path) -> str:
         raise refuse("a folder", "a TOML file")
     if not place.exists():
         raise refuse("", "a file of that name, or the name of a shipped one (see 'haltere about')")
-    if place.stat().st_size > LARGEST_BYTES:
-        raise refuse(f"{place.stat().st_size} bytes", "a text file below 1 MiB")
-    data = place.read_bytes()
+    with place.open("rb") as file:
+        # Never more than that: a device file has no size and no end.
+        data = file.read(LARGEST_BYTES + 1)
+    if len(data) > LARGEST_BYTES:
+        raise refuse(f"more than {LARGEST_BYTES} bytes", "a text file below 1 MiB")
     if data.startswith((b"\xff\xfe", b"\xfe\xff")):
         raise refuse("UTF-16", "UTF-8 text without a byte-order mark", 1)
     if data.startswith(b"\xef\xbb\xbf"):
@@ -65,16 +69,41 @@ def parse(text: str, name: str) -> Document:
         raise FileProblems([Problem(name, 1, "", "a byte-order mark", "UTF-8 text without one")])
     try:
         data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
+    except RecursionError:
+        raise FileProblems([Problem(name, 0, "", "", f"tables nested at most {DEEPEST} deep")]) from None
+    except ValueError as error:  # TOMLDecodeError, or a whole number too long for Python
         raise FileProblems([_syntax(text, name, str(error))]) from None
-    return Document(name, data, _scan(text))
+    document = Document(name, data, _scan(text))
+    deep = _deep(data)
+    if deep:
+        problem = Problem(name, document.line(deep), "", "", f"tables nested at most {DEEPEST} deep")
+        raise FileProblems([problem])
+    return document
+
+
+def _deep(data: dict[str, Any]) -> Path_:
+    """Path of a value nested deeper than anything a rig or a protocol needs; empty if there is none."""
+    open_: list[tuple[Path_, Any]] = [((), data)]
+    while open_:
+        path, value = open_.pop()
+        if len(path) > DEEPEST:
+            return path
+        if isinstance(value, dict):
+            open_.extend(((*path, key), inner) for key, inner in value.items())
+        elif isinstance(value, list):
+            open_.extend(((*path, place), inner) for place, inner in enumerate(value))
+    return ()
 
 
 def _syntax(text: str, name: str, message: str) -> Problem:
     found = PLACE.search(message)
+    long = LONG_NUMBER.search(text)
+    if found is None and long is not None:
+        line = text.count("\n", 0, long.start()) + 1
+        return Problem(name, line, "", f"{long.group()[:20]}...", "a number of fewer digits")
     line = text.count("\n") + 1 if found is None or found.group(1) is None else int(found.group(1))
     words = PLACE.sub("", message).strip().rstrip(".")
-    rows = text.splitlines()
+    rows = text.split("\n")
     row = rows[line - 1].strip() if 0 < line <= len(rows) else ""
     if "overwrite" in words or "twice" in words or "declare" in words.lower():
         key = DOTTED.match(row.strip("[] "))
@@ -89,7 +118,7 @@ def _scan(text: str) -> dict[Path_, int]:
     lines: dict[Path_, int] = {}
     counts: dict[Path_, int] = {}
     table: Path_ = ()
-    rows = text.splitlines()
+    rows = text.split("\n")  # not splitlines: TOML allows other line separators within a comment or a text
     number = 0
     while number < len(rows):
         row = rows[number]

@@ -12,10 +12,13 @@ from collections.abc import Callable
 from pathlib import Path
 
 from rig.description import RigDescription
+from rig.files.extent import excess
 from rig.files.fit import check_against
+from rig.files.limits import SLOWEST_V_PER_S
 from rig.files.lines import parse, read_text
 from rig.files.staircase import read_staircase
 from rig.files.table import Table
+from rig.files.voltage import ABOVE_60_V, HIGHEST_V
 from rig.problem import FileProblems, Problem
 from rig.steps import (
     Hold,
@@ -33,7 +36,6 @@ from rig.steps import (
 )
 
 LONGEST_S = 24 * 3600.0
-MOST_STEPS = 10_000
 
 
 def read_protocol(path: str | Path, rig: RigDescription | None = None) -> Protocol:
@@ -45,17 +47,23 @@ def protocol_from_text(text: str, name: str, rig: RigDescription | None = None) 
     """Read the text of a protocol file called `name` in messages."""
     document = parse(text, name)
     problems: list[Problem] = []
+    if "haltere_rig" in document.data and "haltere_protocol" not in document.data:
+        line = document.line(("haltere_rig",))
+        raise FileProblems([Problem(name, line, "haltere_rig", "", "a protocol file; this is a rig file")])
     root = Table(document, (), document.data, problems)
-    root.integer("haltere_protocol", 1, 1, 1, required=True)
+    root.version("haltere_protocol")
     head = root.table("protocol")
     if head is None:
         root.wrong("protocol", None, "a table [protocol] (it is missing)")
-        head = Table(document, ("protocol",), {"name": name}, [])
-    label = head.text("name", required=True)
+        head = Table(document, ("protocol",), {"name": "unnamed"}, [])
+    label = head.name("name")
     title, notes = head.text("title"), head.text("notes")
     head.finish()
     steps = _steps(root, "step")
     root.finish()
+    too_long = excess(steps)
+    if too_long:
+        root.wrong("step", None, too_long)
     if rig is not None:
         check_against(rig, steps, document, problems)
     if problems:
@@ -74,10 +82,9 @@ def _steps(table: Table, key: str) -> tuple[Step, ...]:
         one = Table(table.document, (*table.path, key, number), row, table.problems)
         do = one.choice("do", tuple(READERS), "", required=True)
         if do:
-            before = len(table.problems)
             step = READERS[do](one, one.line(), one.text("label"))
             one.finish()
-            if len(table.problems) == before and step is not None:
+            if step is not None:
                 steps.append(step)
     return tuple(steps)
 
@@ -92,7 +99,9 @@ def _by(table: Table) -> str:
 
 def _ramp(table: Table, line: int, label: str) -> Step | None:
     to_v = table.quantity("to", "voltage", required=True, low=0.0)
-    slew = table.quantity("slew", "slew", above=0.0)
+    if to_v is not None and to_v > HIGHEST_V:
+        table.wrong("to", table.data["to"], ABOVE_60_V)
+    slew = table.quantity("slew", "slew", low=SLOWEST_V_PER_S)
     return None if to_v is None else Ramp(to_v=to_v, slew_v_per_s=slew, line=line, label=label)
 
 
@@ -177,8 +186,6 @@ def _prompt(table: Table, line: int, label: str) -> Step | None:
 def _repeat(table: Table, line: int, label: str) -> Step | None:
     times = table.integer("times", 1, 1, 1000, required=True)
     steps = _steps(table, "step")
-    if times * len(steps) > MOST_STEPS:
-        table.wrong("times", times, f"at most {MOST_STEPS} steps after repetition")
     return Repeat(times=times, steps=steps, line=line, label=label)
 
 

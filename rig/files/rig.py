@@ -12,11 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from analysis.mechanism.parameters import Mechanism
-from drivers.contract import Halt
 from rig.description import (
-    DEFAULT_HALTS,
-    ChannelDescription,
-    Limits,
     MotorDescription,
     RigDescription,
     SimulatedWorld,
@@ -24,6 +20,7 @@ from rig.description import (
 )
 from rig.files.channels import read_channels
 from rig.files.constants import CARRIAGES, CONSTANTS, REQUIRED, REQUIRED_FOR
+from rig.files.limits import read_halts, read_limits
 from rig.files.lines import Document, parse, read_text
 from rig.files.table import Table
 from rig.files.world import read_world
@@ -31,11 +28,6 @@ from rig.problem import FileProblems, Problem
 
 #: "none": a rig described for analysis only, its constants may be unknown.
 DRIVERS = ("simulated", "none")
-HIGHEST_V = 60.0
-ABOVE_60_V = (
-    "at most 60 V DC: 60 V DC, ripple-free and dry, limits shock risk only (IEC 61010-1, IEC 60204-1 PELV; 35 V wet; "
-    "values from memory); it does not prevent burns, arcs, fire or injury by motion"
-)
 NEEDED = ("body angle", "crank angle", "motor current", "motor voltage")
 CONTEXT = (
     "operator",
@@ -58,6 +50,9 @@ def rig_from_text(text: str, name: str) -> RigDescription:
     """Read the text of a rig file called `name` in messages."""
     document = parse(text, name)
     problems: list[Problem] = []
+    if "haltere_protocol" in document.data and "haltere_rig" not in document.data:
+        line = document.line(("haltere_protocol",))
+        raise FileProblems([Problem(name, line, "haltere_protocol", "", "a rig file; this is a protocol")])
     rig = _rig(document, text, problems)
     if problems or rig is None:
         raise FileProblems(sorted(problems, key=lambda problem: problem.line))
@@ -66,7 +61,7 @@ def rig_from_text(text: str, name: str) -> RigDescription:
 
 def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescription | None:
     root = Table(document, (), document.data, problems)
-    root.integer("haltere_rig", 1, 1, 1, required=True)
+    root.version("haltere_rig")
 
     def part(name: str, required: bool = True) -> Table:
         table = root.table(name)
@@ -78,7 +73,7 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
 
     head, bench = part("rig"), part("bench")
     title = head.text("title")
-    name = head.text("name", required=True)
+    name = head.name("name")
     head.finish()
     driver = bench.choice("driver", DRIVERS, "simulated", required=True)
     sample_hz = bench.quantity("sample_rate", "frequency", required=True, low=100.0, high=20_000.0) or 1000.0
@@ -94,11 +89,24 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
 
     channels = read_channels(part("channel"))
     for measures in NEEDED:
-        if root.table("channel") is not None and not any(one.measures == measures for one in channels):
+        if "channel" in root and not any(one.measures == measures for one in channels):
             root.wrong("channel", None, f'a channel with measures = "{measures}" (none has it)')
     stops = _stops(part("stops"))
-    limits = _limits(part("limits"), stops, channels)
-    halts = _halts(part("halts", required=False))
+    limits = read_limits(part("limits"), stops, channels)
+    halts = read_halts(part("halts", required=False))
+    if frame_rows / sample_hz > 0.5 * limits.stale_s:
+        bench.wrong(
+            "frame_rows",
+            frame_rows,
+            f"frames that take at most half of limits.stale = {limits.stale_s:g} s, so that one may come late",
+        )
+    if limits.flap_hz >= 0.5 * sample_hz:
+        limit_table = part("limits")
+        limit_table.wrong(
+            "flap_rate",
+            limit_table.data.get("flap_rate"),
+            f"a flap rate below half the sample rate, {0.5 * sample_hz:g} Hz: turns are counted from row to row",
+        )
     mechanism, std, unknown = _mechanism(root, stops)
     motor = _motor(root, mechanism)
     world = None
@@ -113,7 +121,11 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
             key = next(key for key, (field, _, _) in CONSTANTS.items() if field == unknown[0])
             if table is not None:
                 table.wrong(key, "unknown", "a value: a simulated rig needs it")
-        world = read_world(simulation) if simulation is not None else SimulatedWorld()
+        world = SimulatedWorld()
+    if simulation is not None:
+        # Checked whatever the driver: a rig is often simulated again after it was only analysed.
+        described = read_world(simulation)
+        world = described if driver == "simulated" else None
     context = _context(root.table("context"))
     root.finish()
     if problems:
@@ -153,64 +165,6 @@ def _stops(table: Table) -> StopDescription:
         table.wrong("high", table.data.get("high"), "an angle above the lower stop")
         return StopDescription(-math.pi, math.pi)
     return StopDescription(low, high)
-
-
-def _limits(table: Table, stops: StopDescription, channels: tuple[ChannelDescription, ...]) -> Limits:
-    voltage = table.quantity("voltage", "voltage", required=True, above=0.0)
-    if voltage is not None and voltage > HIGHEST_V:
-        table.wrong("voltage", table.data["voltage"], ABOVE_60_V)
-    low = table.quantity("travel_low", "angle", required=True)
-    high = table.quantity("travel_high", "angle", required=True)
-    if low is not None and stops.low_rad > -math.pi and low >= stops.low_rad:
-        table.wrong("travel_low", table.data["travel_low"], "an angle beyond the lower end stop")
-    if high is not None and stops.high_rad < math.pi and high <= stops.high_rad:
-        table.wrong("travel_high", table.data["travel_high"], "an angle beyond the upper end stop")
-    load = table.quantity("load", "force", above=0.0)
-    if load is not None and not any(one.measures == "vertical load" for one in channels):
-        table.wrong(
-            "load", table.data["load"], "no load limit on a rig without a channel for the vertical load"
-        )
-    usual = Limits(0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0)
-
-    def take(key: str, kind: str, default: float, low: float = 0.0, high: float = math.inf) -> float:
-        value = table.quantity(key, kind, default, low=low, high=high)
-        return default if value is None else value
-
-    limits = Limits(
-        current_a=table.quantity("current", "current", required=True, above=0.0) or 1.0,
-        voltage_v=voltage or 1.0,
-        winding_deg_c=table.quantity(
-            "winding_temperature", "temperature", required=True, low=30.0, high=200.0
-        )
-        or 100.0,
-        travel_low_rad=low if low is not None else -math.pi,
-        travel_high_rad=high if high is not None else math.pi,
-        flap_hz=table.quantity("flap_rate", "frequency", required=True, above=0.0) or 1.0,
-        slew_v_per_s=table.quantity("slew", "slew", required=True, above=0.0) or 1.0,
-        load_n=load,
-        stale_s=take("stale", "time", usual.stale_s, 0.02, 2.0),
-        loss_fraction=take("loss", "share", usual.loss_fraction, 0.0, 0.5),
-        disk_reserve_bytes=take("disk_reserve", "data", usual.disk_reserve_bytes),
-        stall_s=take("stall_time", "time", usual.stall_s, 0.05, 5.0),
-        stall_v=take("stall_voltage", "voltage", usual.stall_v),
-        standstill_hz=take("standstill", "frequency", usual.standstill_hz, 0.01, 5.0),
-    )
-    table.finish()
-    return limits
-
-
-def _halts(table: Table) -> dict[str, Halt]:
-    halts = dict(DEFAULT_HALTS)
-    words = [halt.value for halt in Halt]
-    for cause, usual in DEFAULT_HALTS.items():
-        word = table.choice(cause, words, usual.value)
-        if cause in ("voltage", "board") and word != Halt.COAST.value:
-            table.wrong(
-                cause, word, "coast: braking or ramping would feed an over-voltage or a faulty bridge"
-            )
-        halts[cause] = Halt(word)
-    table.finish()
-    return halts
 
 
 def _mechanism(
@@ -276,6 +230,7 @@ def _motor(root: Table, mechanism: Mechanism | None) -> MotorDescription | None:
         value = table.quantity(key, kind, default, required=default is None, above=0.0)
         return 1.0 if value is None else value
 
+    ambient = table.quantity("ambient", "temperature", 25.0, low=-40.0, high=60.0)
     motor = MotorDescription(
         resistance_ohm=take("resistance", "resistance", usual.motor_resistance_ohm if usual else None),
         winding_capacity_j_per_k=take(
@@ -290,7 +245,8 @@ def _motor(root: Table, mechanism: Mechanism | None) -> MotorDescription | None:
         housing_ambient_k_per_w=take(
             "housing_ambient", "thermal resistance", usual.housing_ambient_k_per_w if usual else None
         ),
-        ambient_deg_c=table.quantity("ambient", "temperature", 25.0, low=-40.0, high=60.0) or 25.0,
+        copper_coefficient_per_k=usual.copper_coefficient_per_k if usual else 0.003854,
+        ambient_deg_c=25.0 if ambient is None else ambient,
         start_deg_c=table.quantity("start", "temperature", None, low=-40.0, high=150.0),
     )
     table.finish()

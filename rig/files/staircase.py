@@ -5,7 +5,9 @@ from __future__ import annotations
 import math
 import random
 
+from rig.files.limits import SLOWEST_V_PER_S
 from rig.files.table import Table
+from rig.files.voltage import ABOVE_60_V, HIGHEST_V
 from rig.steps import Staircase
 
 ORDERS = ("rising", "falling", "shuffled", "loop")
@@ -15,15 +17,19 @@ MOST_LEVELS = 500
 def read_staircase(table: Table, line: int, label: str) -> Staircase | None:
     """Levels as a list, or as from, to and step; visited rising, falling, shuffled (seed) or as a closed loop."""
     levels = _levels(table)
-    order = table.choice("order", ORDERS, "rising", required=True)
+    order = table.choice("order", ORDERS, "", required=True)
+    if levels is not None:
+        _as_written(table, levels, order)
     seed = table.integer("seed", 1, 0, 2**31 - 1)
     if "seed" in table and order != "shuffled":
         table.wrong("seed", table.data["seed"], 'a seed only with order = "shuffled"')
     return_to = table.quantity("return_to", "voltage", above=0.0)
+    if return_to is not None and return_to > HIGHEST_V:
+        table.wrong("return_to", table.data["return_to"], ABOVE_60_V)
     every = table.integer("return_every", 1, 1, MOST_LEVELS)
     if "return_every" in table and return_to is None:
         table.wrong("return_every", table.data["return_every"], "return_to beside it")
-    slew = table.quantity("slew", "slew", above=0.0)
+    slew = table.quantity("slew", "slew", low=SLOWEST_V_PER_S)
     settle = table.quantity("settle", "time", 3.0, low=0.0, high=600.0)
     at_most = table.quantity("settle_at_most", "time", 10.0, low=0.0, high=3600.0)
     quiet = table.quantity("quiet", "time", 2.0, low=0.0, high=600.0)
@@ -39,7 +45,7 @@ def read_staircase(table: Table, line: int, label: str) -> Staircase | None:
         return None
     if precision is not None and not taps:
         table.wrong("precision", table.data["precision"], "taps beside it: the decay is known from taps only")
-    if levels is None or taps is None:
+    if levels is None or taps is None or not order:
         return None
     visited, directions = _order(levels, order, seed)
     visited, directions, roles = _with_returns(visited, directions, return_to, every)
@@ -90,10 +96,21 @@ def _levels(table: Table) -> list[float] | None:
     if any(level <= 0.0 for level in levels):
         table.wrong(key, table.data[key], "levels above 0 V")
         return None
+    if max(levels) > HIGHEST_V:
+        table.wrong(key, table.data[key], ABOVE_60_V)
     if len(set(levels)) < len(levels):
         table.wrong(key, table.data[key], "each level once (use repeat, or a loop, to come back)")
         return None
     return levels
+
+
+def _as_written(table: Table, levels: list[float], order: str) -> None:
+    """Levels are visited as they are written; what contradicts the order is a slip, not ours to sort."""
+    key = "levels" if "levels" in table else "from"
+    if order in ("rising", "loop") and levels != sorted(levels):
+        table.wrong(key, table.data[key], f'levels that rise, lowest first, with order = "{order}"')
+    if order == "falling" and levels != sorted(levels, reverse=True):
+        table.wrong(key, table.data[key], 'levels that fall, highest first, with order = "falling"')
 
 
 def _order(levels: list[float], order: str, seed: int) -> tuple[list[float], list[str]]:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import difflib
 import math
+import re
 from collections.abc import Sequence
 from typing import Any
 
@@ -12,16 +13,25 @@ from rig.files.lines import Document, Path_
 from rig.files.quantity import Quantity
 from rig.problem import Problem
 
+NAME = re.compile(r"[^\W_][\w .+-]{0,59}")
+
 
 def shown(value: object) -> str:
     """A value as it stands in the file, shortened."""
-    text = (
-        f'"{value}"'
-        if isinstance(value, str)
-        else str(value).lower()
-        if isinstance(value, bool)
-        else str(value)
-    )
+    match value:
+        case str():
+            text = f'"{value}"'
+        case bool():
+            text = str(value).lower()
+        case int():
+            text = str(value) if abs(value) < 10**60 else "a number of more than 60 digits"
+        case dict():
+            text = "a table"
+        case _:
+            try:
+                text = str(value)
+            except ValueError:  # a list with a whole number too long to be told in decimal
+                text = "a list"
     return text if len(text) <= 60 else text[:57] + "..."
 
 
@@ -123,6 +133,21 @@ class Table:
             return default
         return value
 
+    def version(self, key: str) -> None:
+        """The version of a file's format, of which there is one so far."""
+        words = f"{key} = 1, the only version of such files so far"
+        value = self._value(key, f"{words} (it is missing)")
+        if value is not None and (isinstance(value, bool) or value != 1):
+            self.wrong(key, value, words)
+
+    def name(self, key: str) -> str:
+        """A name that may become part of a file's name."""
+        value = self.text(key, required=True)
+        if key in self.data and isinstance(self.data[key], str) and not NAME.fullmatch(value):
+            words = "a name of letters, digits, spaces and . _ + -, at most 60, that begins with a letter or digit"
+            self.wrong(key, value, words)
+        return value
+
     def integer(self, key: str, default: int, low: int, high: int, *, required: bool = False) -> int:
         words = f"a whole number from {low} to {high}"
         value = self._value(key, f"{words} (it is missing)" if required else "")
@@ -137,8 +162,8 @@ class Table:
         value = self._value(key, "")
         if value is None:
             return default
-        good = isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
-        if not good or not low <= value <= high:
+        good = isinstance(value, int | float) and not isinstance(value, bool)
+        if not good or not low <= value <= high:  # which nan is not, and an endless whole number can be asked
             self.wrong(key, value, f"a plain number from {_plain(low)} to {_plain(high)}")
             return default
         return float(value)
@@ -184,11 +209,7 @@ class Table:
         for key in self.data:
             if key not in self._asked:
                 known = sorted(self._asked)
-                self.wrong(
-                    key,
-                    self.data[key] if not isinstance(self.data[key], dict) else "a table",
-                    _known(key, known),
-                )
+                self.wrong(key, self.data[key], _known(key, known))
 
 
 def _known(key: str, known: Sequence[str]) -> str:

@@ -167,7 +167,7 @@ RIG = [
     Broken('tap_duration = "10 ms"', 'tap_duration = "10 s"', "simulation.tap_duration", "from 0.001 to 0.1"),
     Broken("seed = 1", "seed = -1", "simulation.seed", "a whole number from 0"),
     Broken('notes = "no', 'weather = "no', "context.weather", "a known key"),
-    Broken("haltere_rig = 1", "haltere_rig = 2", "haltere_rig", "a whole number from 1 to 1"),
+    Broken("haltere_rig = 1", "haltere_rig = 2", "haltere_rig", "haltere_rig = 1, the only version"),
     Broken("haltere_rig = 1\n", "", "haltere_rig", "it is missing"),
     Broken('name = "boom"', "name = 5", "rig.name", "a text in quotes"),
     Broken('name = "boom"', 'name = "boom"\nname = "boom"', "name", "given once"),
