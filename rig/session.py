@@ -11,6 +11,7 @@ from __future__ import annotations
 
 import itertools
 import json
+import math
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from types import TracebackType
@@ -38,12 +39,17 @@ class Stream:
 
     def __init__(self, group: h5py.Group, path: Path, losses: Sequence[tuple[int, ...]] = ()) -> None:
         self._group = group
+        self._path = path
         self.losses = tuple(losses)  # tick of the row after, rows, frames, overruns
         self._cache: dict[str, NDArray[Any]] = {}
         self.tick_hz = int(group.attrs["tick_hz"])
         self.row_period_ticks = int(group.attrs["row_period_ticks"])
         self.frame_rows = int(group.attrs["frame_rows"])
+        if self.tick_hz < 1:
+            raise Damaged(f"{path}: stream {group.name} counts {self.tick_hz} ticks a second")
         named = [(int(data.attrs["column"]), name) for name, data in group.items() if "column" in data.attrs]
+        if sorted(column for column, _ in named) != list(range(len(named))):
+            raise Damaged(f"{path}: stream {group.name} has columns of one number or none")
         names = [name for _, name in sorted(named)]
         self.channels = ChannelTable(tuple(_channel(name, group[name]) for name in names))
         length = len(group["tick"])
@@ -56,8 +62,13 @@ class Stream:
 
     @property
     def tick(self) -> NDArray[np.uint64]:
-        """Board ticks, unwrapped, uint64, shape (n,)."""
-        return self._read("tick")
+        """Board ticks, unwrapped, uint64, shape (n,), strictly increasing."""
+        if "tick" not in self._cache:
+            tick = self._read("tick")
+            if np.any(tick[1:] <= tick[:-1]):
+                del self._cache["tick"]
+                raise Damaged(f"{self._path}: the ticks of stream {self._group.name} do not increase")
+        return self._cache["tick"]
 
     @property
     def time_s(self) -> NDArray[np.float64]:
@@ -115,8 +126,13 @@ class Stream:
                 )
 
     def _read(self, name: str) -> NDArray[Any]:
+        # Columns are read late, so damage inside one shows only here.
         if name not in self._cache:
-            self._cache[name] = self._group[name][:]
+            try:
+                self._cache[name] = self._group[name][:]
+            except (OSError, RuntimeError):
+                where = f"{self._group.name}/{name}"
+                raise Damaged(f"{self._path}: {where} cannot be read, its data are damaged") from None
         return self._cache[name]
 
 
@@ -136,12 +152,16 @@ class Session:
         }
         self.rig_text = _text(file, "rig")
         self.protocol_text = _text(file, "protocol")
-        self.header: dict[str, Any] = json.loads(_text(file, "header"))
-        self.results: dict[str, Any] = {
-            name: json.loads(_text(file, f"results/{name}")) for name in ("live", "final")
-        }
+        self.header: dict[str, Any] = _object(_text(file, "header"), "header")
+        final = json.loads(_text(file, "results/final"))
+        if final is not None and not isinstance(final, dict):
+            raise ValueError("results/final is not a JSON object")
+        live = json.loads(_text(file, "results/live"))
+        if not isinstance(live, list):
+            raise ValueError("results/live is not a JSON list")
+        self.results: dict[str, Any] = {"live": live, "final": final}
         self.events = [
-            Event(int(tick), kind.decode(), json.loads(data))
+            Event(int(tick), kind.decode(), _object(data, "an event's data"))
             for tick, kind, data in zip(
                 file["events/tick"][:], file["events/kind"][:], file["events/data"][:], strict=True
             )
@@ -196,7 +216,10 @@ def open_session(path: str | Path) -> Session:
     except Damaged:
         file.close()
         raise
-    except (KeyError, ValueError, TypeError, AttributeError, OSError, RuntimeError) as error:
+    except (AttributeError, TypeError, RecursionError):
+        file.close()  # their words are about Python, not about the file
+        raise Damaged(f"{path} is damaged: a part of it is missing or not of its kind") from None
+    except (KeyError, ValueError, OSError, RuntimeError) as error:
         file.close()
         words = str(error).strip("'\"").split("\n")[0]
         raise Damaged(f"{path} is damaged: {words}") from None
@@ -205,6 +228,7 @@ def open_session(path: str | Path) -> Session:
 def _inspect(file: h5py.File, path: Path) -> None:
     """Refuse what could lead out of the file or fill the memory before anything is read."""
     size = path.stat().st_size
+    seen: set[int] = set()
 
     def look(group: h5py.Group) -> None:
         for name in group:
@@ -212,6 +236,11 @@ def _inspect(file: h5py.File, path: Path) -> None:
             if not isinstance(link, h5py.HardLink):
                 raise Damaged(f"{path}: {group.name}/{name} links to another place")
             item = group[name]
+            # A group reached twice could hold itself, or groups without end.
+            address = h5py.h5o.get_info(item.id).addr
+            if address in seen:
+                raise Damaged(f"{path}: {group.name}/{name} stands in two places")
+            seen.add(address)
             if isinstance(item, h5py.Group):
                 look(item)
                 continue
@@ -220,7 +249,10 @@ def _inspect(file: h5py.File, path: Path) -> None:
             if item.size and item.size * item.dtype.itemsize > MOST_EXPANSION * size + 2**20:
                 raise Damaged(f"{path}: {item.name} claims {item.size} values, more than the file can hold")
 
+    seen.add(h5py.h5o.get_info(file.id).addr)
     look(file)
+    if "board" not in file["streams"]:
+        raise Damaged(f"{path} has no stream of the board")
     for stream in file["streams"].values():
         for name, data in stream.items():
             wanted = {"tick": "u8", "time_s": "f8", "status": "u2"}.get(name, "i4")
@@ -230,8 +262,18 @@ def _inspect(file: h5py.File, path: Path) -> None:
                 )
 
 
+def _object(text: str | bytes, what: str) -> dict[str, Any]:
+    found = json.loads(text)
+    if not isinstance(found, dict):
+        raise ValueError(f"{what} is not a JSON object")
+    return found
+
+
 def _channel(name: str, data: h5py.Dataset) -> Channel:
     attributes = data.attrs
+    for number in ("scale", "offset", "delay_s"):
+        if not math.isfinite(attributes[number]):
+            raise ValueError(f"{number} of {name} is {attributes[number]}")
     return Channel(
         name=name,
         measures=str(attributes["measures"]),
