@@ -220,7 +220,7 @@ def test_ctrl_c_halts_and_keeps_the_session(tmp_path: Path) -> None:
         (("run",), "required"),
         (("run", "nothing", "--rig", "boom"), "nothing"),
         (("run", "quick", "--rig", "nothing"), "nothing"),
-        (("run", "quick", "--rig", "quick"), "haltere_rig"),
+        (("run", "quick", "--rig", "quick"), "a rig file; this is a protocol"),
         (("run", "quick", "--rig", "boom", "--seed", "x"), "--seed"),
         (("run", "quick", "--rig", "boom", "--out", "/nowhere/x.h5"), "is not a folder"),
         (("check", "/"), "a folder"),
