@@ -271,6 +271,9 @@ def _object(text: str | bytes, what: str) -> dict[str, Any]:
 
 def _channel(name: str, data: h5py.Dataset) -> Channel:
     attributes = data.attrs
+    for wanted in ("measures", "unit", "scale", "offset", "delay_s", "low_raw", "high_raw", "calibration"):
+        if wanted not in attributes:
+            raise ValueError(f"{name} has no {wanted}")
     for number in ("scale", "offset", "delay_s"):
         if not math.isfinite(attributes[number]):
             raise ValueError(f"{number} of {name} is {attributes[number]}")

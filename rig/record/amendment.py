@@ -28,7 +28,7 @@ def write_results(session: Path, results: dict[str, Any]) -> None:
     aside = session.with_name(f".{session.name}.part")
     try:
         shutil.copyfile(session, aside)
-        with h5py.File(aside, "r+") as file:
+        with h5py.File(aside, "r+", libver=("v110", "v110")) as file:
             if "haltere_format" not in file.attrs or "results" not in file:
                 raise Damaged(f"{session} is not a Haltere session")
             if "final" in file["results"]:
