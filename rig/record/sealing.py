@@ -23,6 +23,7 @@ found, where the older layout would hand it out as it is.
 from __future__ import annotations
 
 import json
+import math
 import os
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -41,6 +42,8 @@ from rig.record.errors import Damaged, JournalFailure, NameTaken
 
 FORMAT = 1
 CHUNK_ROWS = 16384
+#: Columns every stream has, so that no channel can be called so.
+COLUMNS = ("tick", "time_s", "status")
 TEXT = h5py.string_dtype("utf-8")
 
 
@@ -80,6 +83,8 @@ def read_recording(path: Path) -> Recording:
         channels = ChannelTable(tuple(Channel(**fields) for fields in book.header["channels"]))
     except (KeyError, TypeError, ValueError) as error:
         raise Damaged(f"{path}: the journal's header has no readable channel table") from error
+    if wrong := _wrong_header(book.header, channels):
+        raise Damaged(f"{path}: the journal's header {wrong}")
     recording = Recording(book.header, channels)
     sequence = FrameSequence()
     overruns = 0
@@ -103,8 +108,11 @@ def read_recording(path: Path) -> Recording:
             recording.blocks.append(block)
         elif record.kind == jn.EVENT:
             try:
-                recording.events.append(Event.from_json(record.fields()))
-            except (ValueError, KeyError, TypeError):
+                event = Event.from_json(record.fields())
+                if not 0 <= event.tick < 2**64:
+                    raise ValueError("no tick")
+                recording.events.append(event)
+            except (ValueError, KeyError, TypeError, OverflowError):
                 recording.damage = f"an event that is none (record {record.sequence})"
                 break
         elif record.kind == jn.RESULT:
@@ -120,6 +128,31 @@ def read_recording(path: Path) -> Recording:
     recording.ended = book.ended
     recording.damage = recording.damage or book.damage
     return recording
+
+
+def _wrong_header(header: dict[str, Any], channels: ChannelTable) -> str:
+    """Why no session can be made of a header: told before any file is written or deleted; "" if one can."""
+    for name, least in (("tick_hz", 1), ("row_period_ticks", 0), ("frame_rows", 0)):
+        number = header.get(name, 0)
+        if not isinstance(number, int) or not least <= number < 2**53:
+            return f"gives {number!r} as {name}"
+    names = [channel.name for channel in channels]
+    for channel in channels:
+        name = channel.name
+        if not isinstance(name, str) or not name.isidentifier() or name in COLUMNS or names.count(name) > 1:
+            return f"has a channel called {name!r}"
+        texts = (channel.unit, channel.measures, channel.calibration)
+        numbers = (channel.scale, channel.offset, channel.delay_s)
+        whole = (channel.low_raw, channel.high_raw)
+        if not (
+            all(isinstance(text, str) for text in texts)
+            and all(isinstance(number, int | float) and math.isfinite(number) for number in numbers)
+            and all(isinstance(number, int) and abs(number) <= 2**31 for number in whole)
+        ):
+            return f"describes channel {name!r} in a way that cannot be read"
+    if not isinstance(header.get("calibrations", {}), dict):
+        return "has no readable calibrations"
+    return ""
 
 
 def seal(journal: Path, session: Path, *, keep_journal: bool = False) -> Recording:
@@ -159,7 +192,7 @@ def write_session(recording: Recording, session: Path) -> None:
         sync_folder(session.absolute().parent)
     except FileExistsError:
         raise NameTaken(f"{session} is there already") from None
-    except (OSError, RuntimeError) as error:  # h5py tells a full disk as either
+    except (OSError, RuntimeError, ValueError) as error:  # h5py tells a full disk as one of the first two
         words = error.strerror if isinstance(error, OSError) and error.strerror else str(error).split("(")[0]
         raise JournalFailure(f"{session} cannot be written: {words.strip()}") from error
     finally:

@@ -10,6 +10,7 @@ import subprocess
 import sys
 import time
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -91,6 +92,9 @@ CRAFTED = {
     "event without a tick": (jn.EVENT, b'{"kind": "mark"}'),
     "event that is a list": (jn.EVENT, b"[1, 2]"),
     "event with a tick in words": (jn.EVENT, b'{"tick": "soon", "kind": "mark"}'),
+    "event before the beginning": (jn.EVENT, b'{"tick": -1, "kind": "mark"}'),
+    "event after the end of time": (jn.EVENT, b'{"tick": 1e999, "kind": "mark"}'),
+    "event beyond 64 bits": (jn.EVENT, b'{"tick": 18446744073709551616, "kind": "mark"}'),
     "event not in UTF-8": (jn.EVENT, b"\xff\xfe{}"),
     "result of text": (jn.RESULT, b"{"),
     "short frame": (jn.FRAME, b"abc"),
@@ -117,6 +121,41 @@ def test_a_header_of_nonsense_is_damage(tmp_path: Path, text: bytes) -> None:
     with pytest.raises(Damaged) as caught:
         seal(path, tmp_path / "a.h5")
     assert str(path) in str(caught.value) and path.exists()
+
+
+def changed(**fields: Any) -> dict[str, Any]:
+    return {**header(), **fields}
+
+
+def channel(**fields: Any) -> dict[str, Any]:
+    channels = header()["channels"]
+    return changed(channels=[{**channels[0], **fields}, *channels[1:]])
+
+
+HEADERS = {
+    "no time base": changed(tick_hz=None),
+    "a time base of 0": changed(tick_hz=0),
+    "frames of text": changed(frame_rows="x"),
+    "calibrations in a list": changed(calibrations=[1]),
+    "a channel called tick": channel(name="tick"),
+    "a channel with a path": channel(name="../body"),
+    "a channel twice": channel(name="crank"),
+    "a channel without a name": channel(name=""),
+    "a scale in words": channel(scale="x"),
+    "a unit that is a number": channel(unit=3),
+}
+
+
+@pytest.mark.parametrize("what", HEADERS)
+def test_a_header_no_session_can_be_made_of(tmp_path: Path, what: str) -> None:
+    """Told before the journal is touched: a session that nobody can open is no reason to delete it."""
+    path = tmp_path / "a.journal"
+    path.write_bytes(jn.MAGIC + jn.encode(jn.HEADER, 0, jn.to_json(HEADERS[what])))
+    append(path, jn.FRAME, frame(0).pack())
+    with pytest.raises(Damaged, match="the journal's header") as caught:
+        seal(path, tmp_path / "a.h5")
+    assert str(path) in str(caught.value)
+    assert [one.name for one in tmp_path.iterdir()] == ["a.journal"]
 
 
 SEALING = """
