@@ -75,17 +75,27 @@ def test_every_flipped_byte_gives_no_wrong_row(tmp_path: Path) -> None:
     write(path, 3)
     data = path.read_bytes()
     header_end = next(iter(Journal(path))).end
-    for place in [*range(40), *range(header_end - 10, len(data))]:
-        broken = bytearray(data)
-        broken[place] ^= 0x55
-        path.write_bytes(broken)
-        try:
-            found = read_recording(path)
-        except Damaged:
-            assert place < header_end
-            continue
-        assert good(found.raw, 3)
-        assert found.damage
+    # The texts in the header are long and all alike: every 97th of their bytes will do.
+    places = [*range(40), *range(40, header_end - 10, 97), *range(header_end - 10, len(data))]
+    for place in places:
+        for mask in (0x01, 0x55, 0x80):
+            broken = bytearray(data)
+            broken[place] ^= mask
+            path.write_bytes(broken)
+            try:
+                found = read_recording(path)
+            except Damaged as error:
+                assert place < header_end
+                assert str(path) in str(error) and "\n" not in str(error)
+                continue
+            assert place >= header_end
+            assert good(found.raw, 3)
+            # The event before each frame comes out with it, whole or not at all.
+            assert [event.data["text"] for event in found.events] == [
+                f"frame {k}" for k in range(len(found.events))
+            ]
+            assert len(found.events) - len(found.blocks) in (0, 1)
+            assert found.damage and not found.ended
 
 
 def test_ticks_are_unwrapped_and_losses_counted(tmp_path: Path) -> None:
@@ -191,7 +201,8 @@ def test_killed_writer(tmp_path: Path, after_s: float) -> None:
     list(book)
     assert book.good_bytes >= (told[-1] if told else 0)
     found = read_recording(path)
-    assert good(found.raw[: 100 * ROWS], 10_000)
+    assert len(found.raw) and good(found.raw, len(found.raw) // ROWS)
+    assert not found.ended
     assert np.all(np.diff(found.tick.astype(np.int64)) == 1000)
 
 
