@@ -102,7 +102,7 @@ class Runner:
                 return made
             return made + self._end(tick)
         if self.state == STOPPING:
-            return self._stopping(block, tick, flap_hz)
+            return self._stopping(block, tick, flap_hz, done)
         return self._note_trips(trips) + self._turning(tick, flap_hz)
 
     # -- ends ------------------------------------------------------------------------------------------
@@ -150,10 +150,17 @@ class Runner:
         data = {"how": how.value, "cause": cause}
         return cm.HaltDrive("halt", data, how, self.rig.limits.slew_v_per_s)
 
-    def _stopping(self, block: RowBlock, tick: int, flap_hz: float) -> list[cm.Command]:
+    def _stopping(
+        self, block: RowBlock, tick: int, flap_hz: float, done: Sequence[Event]
+    ) -> list[cm.Command]:
+        for event in done:
+            if event.kind == "halt":  # a board says when it took effect: no later than a moment from now
+                self._stop_from = max(self._stop_from, min(event.tick, tick + self.tick_hz))
         enabled = bool(block.status & Status.ENABLED)
         ramping = bool(block.status & Status.RAMPING)
-        if tick == self._stop_from or (enabled and ramping):
+        # Frames filled before the halt took effect know nothing of its ramp: taking them for its end would
+        # cut the ramp short.
+        if int(block.tick[0]) <= self._stop_from or (enabled and ramping):
             return []
         self.state = TURNING
         self._off_tick = tick

@@ -91,6 +91,29 @@ def test_the_operator_can_cut_short_a_ramp_down() -> None:
     assert halts(made) == [RIG.halts["operator"]]
 
 
+def test_frames_on_their_way_do_not_cut_a_ramp_short() -> None:
+    """A link brings frames filled before the halt took effect: enabled, and not yet ramping."""
+    runner = started()
+    runner.advance(block(50, ON), 10.0, trips=[trip("load", Halt.RAMP)])
+    took_effect = [Event(52 * FRAME_TICKS + 7000, "halt", {"how": "ramp"})]
+    made = runner.advance(block(51, ON), 10.0, done=took_effect)
+    made += runner.advance(block(52, ON), 10.0)
+    assert made == [] and runner.state == STOPPING
+    assert runner.advance(block(53, ON | Status.RAMPING), 10.0) == []
+    made = runner.advance(block(54, ON), 10.0)
+    assert halts(made) == [Halt.COAST] and runner.state == TURNING
+    assert [command.kind for command in made] == ["", "turning"]
+
+
+def test_a_halt_that_claims_to_be_far_ahead_is_not_waited_for() -> None:
+    runner = started()
+    runner.advance(block(50, ON), 10.0, trips=[trip("load", Halt.RAMP)])
+    runner.advance(block(51, ON), 10.0, done=[Event(2**40, "halt", {"how": "ramp"})])
+    for number in range(52, 120):
+        runner.advance(block(number, ON), 10.0)
+    assert runner.state == TURNING
+
+
 def test_a_trip_while_the_crank_coasts_is_told_and_decides_the_exit_code() -> None:
     runner = Runner(RIG, Protocol(name="test", title="", steps=()), TABLE, 1_000_000)
     runner.advance(block(0), 5.0)
