@@ -1,8 +1,25 @@
-"""Serial ports of this machine. The only module that imports pyserial."""
+"""Serial ports and TCP links of this machine. The only module that imports pyserial.
+
+An address is what pyserial opens: a device ("/dev/ttyACM0", "COM3") or "socket://HOST:PORT".
+"""
 
 from __future__ import annotations
 
+import os
+import select
+from contextlib import suppress
 from dataclasses import dataclass
+from typing import Protocol
+
+import serial
+from serial.tools import list_ports
+
+from drivers.errors import LinkError, LinkTimeout
+
+#: Far above what a link brings between two reads; one read takes all there is.
+BLOCK_BYTES = 1 << 16
+#: A line that takes nothing for so long is blocked; the board's watchdog acts after the same time.
+WRITE_S = 0.2
 
 
 @dataclass(frozen=True)
@@ -15,6 +32,87 @@ class Port:
 
 def serial_ports() -> tuple[Port, ...]:
     """The serial ports present, in order of name; opens none of them (opening resets many boards)."""
-    from serial.tools import list_ports
-
     return tuple(Port(port.device, port.description or "") for port in sorted(list_ports.comports()))
+
+
+class Wire(Protocol):
+    """Bytes to and from a board."""
+
+    def read(self, max_wait_s: float) -> bytes:
+        """All bytes there are, after waiting up to `max_wait_s` for the first; b"" is silence.
+
+        LinkError when the other end is gone, which silence is not.
+        """
+
+    def write(self, data: bytes) -> None:
+        """LinkTimeout if the line does not take the bytes, LinkError when the other end is gone."""
+
+    def close(self) -> None: ...
+
+
+class SerialWire:
+    """A serial port or TCP link, for this process alone.
+
+    LinkError if it cannot be opened: absent, in use, not permitted.
+    """
+
+    def __init__(self, address: str, baud: int) -> None:
+        self._address = address
+        settings = {} if "://" in address else {"exclusive": True}
+        try:
+            self._port = serial.serial_for_url(
+                address, baudrate=baud, timeout=0, write_timeout=WRITE_S, **settings
+            )
+        except (serial.SerialException, OSError, ValueError) as error:
+            raise LinkError(f"{address} cannot be opened: {_reason(error)}") from None
+        try:
+            self._descriptor: int | None = self._port.fileno() if os.name == "posix" else None
+        except (OSError, AttributeError):
+            self._descriptor = None
+
+    def read(self, max_wait_s: float) -> bytes:
+        try:
+            if self._descriptor is not None:
+                # One wait for the first byte, then everything at once: reads byte by byte lose rows.
+                if not select.select([self._descriptor], [], [], max(max_wait_s, 0.0))[0]:
+                    return b""
+                return bytes(self._port.read(BLOCK_BYTES))
+            self._port.timeout = max(max_wait_s, 0.0)
+            first = bytes(self._port.read(1))
+            return first + bytes(self._port.read(self._port.in_waiting)) if first else b""
+        except (serial.SerialException, OSError, ValueError, TypeError) as error:
+            raise self._gone(error) from None
+
+    def write(self, data: bytes) -> None:
+        try:
+            self._port.write(data)
+        except serial.SerialTimeoutException:
+            raise LinkTimeout(f"{self._address} takes no more bytes: the board does not read") from None
+        except (serial.SerialException, OSError, ValueError, TypeError) as error:
+            raise self._gone(error) from None
+
+    def close(self) -> None:
+        with suppress(serial.SerialException, OSError):
+            self._port.close()
+
+    def _gone(self, error: Exception) -> LinkError:
+        return LinkError(f"the line to the bench is down ({self._address}): unplugged, or the board has gone")
+
+
+def open_wire(address: str, baud: int = 1_000_000) -> SerialWire:
+    """Open a serial port or TCP link exclusively. LinkError, with the reason, if that cannot be done."""
+    return SerialWire(address, baud)
+
+
+def _reason(error: Exception) -> str:
+    words = str(error).lower()
+    number = getattr(error, "errno", None)
+    if "lock" in words or number == 16:
+        return "another program has it open"
+    if number == 2 or "no such file" in words:
+        return "there is no such port"
+    if number == 13 or "permission" in words:
+        return "permission denied; the user must belong to the group that owns serial ports"
+    if "refused" in words:
+        return "nobody listens there"
+    return words.split("\n")[0]

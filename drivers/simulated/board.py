@@ -200,6 +200,12 @@ class Board:
             raise BenchRefused("the latch stays set while the crank is still turning")
         self.latch = None
 
+    def restart(self) -> None:
+        """The processor starts anew: drive off, lock, latch and ramp forgotten."""
+        self._off(COASTING)
+        self.locked = False
+        self.latch = None
+
     # What the board does by itself
 
     def act(self) -> None:

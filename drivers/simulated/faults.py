@@ -100,6 +100,10 @@ class Faults:
     def wake(self) -> None:
         self.hung = self._line.silent = False
 
+    def restart_board(self) -> None:
+        """The board loses its supply for a moment, or is reset: off, and nothing remembered."""
+        self._board.restart()
+
     # Contacts of the board
 
     def open_guard(self) -> None:
