@@ -23,7 +23,7 @@ def main(words: argparse.Namespace) -> Exit:
         raise CommandError(str(error)) from None
     except JournalFailure as error:
         raise CommandError(str(error), Exit.HALTED) from None
-    rows = len(recording.tick)
+    rows = len(recording)
     how = "complete" if recording.ended else recording.damage or "it ends without an end record"
     print(
         f"{out}: {rows} rows and {len(recording.events)} events from {journal} ({how}); the journal is kept"

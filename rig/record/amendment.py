@@ -10,14 +10,19 @@ from typing import Any
 
 import h5py
 
+from rig.record import digests
 from rig.record.durability import sync_folder
 from rig.record.errors import Damaged, JournalFailure
 
 TEXT = h5py.string_dtype("utf-8")
+FINAL = "/results/final"
 
 
-def write_results(session: Path, results: dict[str, Any]) -> None:
+def write_results(session: Path, results: dict[str, Any], software: str = "") -> None:
     """Replace `/results/final`: a copy is changed, synced and put in the place of the file.
+
+    `software` is what worked them out. Their digest goes with them; no other is touched, so that a damage done
+    before still shows.
 
     Raises FileNotFoundError, Damaged if it is no session, JournalFailure if it cannot be written; the old file
     then stands as it was.
@@ -31,9 +36,15 @@ def write_results(session: Path, results: dict[str, Any]) -> None:
         with h5py.File(aside, "r+", libver=("v110", "v110")) as file:
             if "haltere_format" not in file.attrs or "results" not in file:
                 raise Damaged(f"{session} is not a Haltere session")
-            if "final" in file["results"]:
-                del file["results/final"]
-            file["results"].create_dataset("final", data=text, dtype=TEXT)
+            if FINAL in file:
+                del file[FINAL]
+            final = file.create_dataset(FINAL, data=text, dtype=TEXT)
+            if software:
+                final.attrs["software"] = software
+            try:
+                digests.refresh(file, FINAL)
+            except ValueError as error:
+                raise Damaged(f"{session} is damaged: {error}") from None
         descriptor = os.open(aside, os.O_RDONLY)
         try:
             os.fsync(descriptor)

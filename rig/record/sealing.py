@@ -9,9 +9,10 @@
                            (the group's attributes: tick_hz, row_period_ticks, frame_rows)
     /events/tick, kind, data      one entry an event; data is JSON text
     /losses/tick, rows, frames, overruns   lost before the row at that tick
-    /results/live, /results/final          JSON texts
+    /results/live, /results/final          JSON texts; the attribute software of final: what worked it out
     /rig, /protocol, /header      texts as they were when the run began
     /calibrations/NAME            texts
+    /digests               JSON text, SHA-256 of each dataset and of all attributes (`rig.record.digests`)
 
 It is written under another name in the same folder, synced, read back and compared, and then given its name:
 there is never half a session file. The journal is deleted only after that, and only if asked.
@@ -23,136 +24,23 @@ found, where the older layout would hand it out as it is.
 from __future__ import annotations
 
 import json
-import math
 import os
-from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
 
 import h5py
 import numpy as np
-from numpy.typing import NDArray
 
-from drivers.channels import Channel, ChannelTable
-from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
 from rig.events import Event
-from rig.record import journal as jn
+from rig.record import digests
 from rig.record.durability import lock, sync_folder
-from rig.record.errors import Damaged, JournalFailure, NameTaken
+from rig.record.errors import JournalFailure, NameTaken
+from rig.record.recording import Recording, read_recording
 
 FORMAT = 1
-CHUNK_ROWS = 16384
-#: Columns every stream has, so that no channel can be called so.
-COLUMNS = ("tick", "time_s", "status")
-TEXT = h5py.string_dtype("utf-8")
-
-
-@dataclass
-class Recording:
-    """A journal in memory: rows, events, losses and results."""
-
-    header: dict[str, Any]
-    channels: ChannelTable
-    blocks: list[RowBlock] = field(default_factory=list)
-    events: list[Event] = field(default_factory=list)
-    losses: list[tuple[int, int, int, int]] = field(default_factory=list)  # tick, rows, frames, overruns
-    live: list[dict[str, Any]] = field(default_factory=list)
-    final: dict[str, Any] | None = None
-    ended: bool = False
-    damage: str = ""
-
-    @property
-    def tick(self) -> NDArray[np.uint64]:
-        return np.concatenate([block.tick for block in self.blocks] or [np.empty(0, dtype=np.uint64)])
-
-    @property
-    def raw(self) -> NDArray[np.int32]:
-        empty = np.empty((0, len(self.channels)), dtype=np.int32)
-        return np.concatenate([block.raw for block in self.blocks] or [empty])
-
-    @property
-    def status(self) -> NDArray[np.uint16]:
-        parts = [np.full(len(block), block.status, dtype=np.uint16) for block in self.blocks]
-        return np.concatenate(parts or [np.empty(0, dtype=np.uint16)])
-
-
-def read_recording(path: Path) -> Recording:
-    """The intact part of a journal. Raises Damaged if its header is not readable."""
-    book = jn.Journal(path)
-    try:
-        channels = ChannelTable(tuple(Channel(**fields) for fields in book.header["channels"]))
-    except (KeyError, TypeError, ValueError) as error:
-        raise Damaged(f"{path}: the journal's header has no readable channel table") from error
-    if wrong := _wrong_header(book.header, channels):
-        raise Damaged(f"{path}: the journal's header {wrong}")
-    recording = Recording(book.header, channels)
-    sequence = FrameSequence()
-    overruns = 0
-    for record in book:
-        if record.kind == jn.FRAME:
-            try:
-                block = sequence.place(RowFrame.unpack(record.payload))
-            except FrameDamaged as error:
-                recording.damage = f"{error} (record {record.sequence})"
-                break
-            if block.raw.shape[1] != len(channels):
-                recording.damage = (
-                    f"a row frame with {block.raw.shape[1]} channels (record {record.sequence})"
-                )
-                break
-            new_overruns = (block.overruns - overruns) & 0xFFFF if recording.blocks else 0
-            overruns = block.overruns
-            if block.lost_rows or block.lost_frames or new_overruns:
-                loss = (int(block.tick[0]), block.lost_rows, block.lost_frames, new_overruns)
-                recording.losses.append(loss)
-            recording.blocks.append(block)
-        elif record.kind == jn.EVENT:
-            try:
-                event = Event.from_json(record.fields())
-                if not 0 <= event.tick < 2**64:
-                    raise ValueError("no tick")
-                recording.events.append(event)
-            except (ValueError, KeyError, TypeError, OverflowError):
-                recording.damage = f"an event that is none (record {record.sequence})"
-                break
-        elif record.kind == jn.RESULT:
-            try:
-                fields = record.fields()
-            except ValueError:
-                recording.damage = f"a result that is none (record {record.sequence})"
-                break
-            if fields.pop("which", "live") == "final":
-                recording.final = fields
-            else:
-                recording.live.append(fields)
-    recording.ended = book.ended
-    recording.damage = recording.damage or book.damage
-    return recording
-
-
-def _wrong_header(header: dict[str, Any], channels: ChannelTable) -> str:
-    """Why no session can be made of a header: told before any file is written or deleted; "" if one can."""
-    for name, least in (("tick_hz", 1), ("row_period_ticks", 0), ("frame_rows", 0)):
-        number = header.get(name, 0)
-        if not isinstance(number, int) or not least <= number < 2**53:
-            return f"gives {number!r} as {name}"
-    names = [channel.name for channel in channels]
-    for channel in channels:
-        name = channel.name
-        if not isinstance(name, str) or not name.isidentifier() or name in COLUMNS or names.count(name) > 1:
-            return f"has a channel called {name!r}"
-        texts = (channel.unit, channel.measures, channel.calibration)
-        numbers = (channel.scale, channel.offset, channel.delay_s)
-        whole = (channel.low_raw, channel.high_raw)
-        if not (
-            all(isinstance(text, str) for text in texts)
-            and all(isinstance(number, int | float) and math.isfinite(number) for number in numbers)
-            and all(isinstance(number, int) and abs(number) <= 2**31 for number in whole)
-        ):
-            return f"describes channel {name!r} in a way that cannot be read"
-    if not isinstance(header.get("calibrations", {}), dict):
-        return "has no readable calibrations"
-    return ""
+#: What of a channel stands beside its column.
+CHANNEL_ATTRIBUTES = (
+    "unit", "scale", "offset", "calibration", "measures", "delay_s", "low_raw", "high_raw"
+)  # fmt: skip
 
 
 def seal(journal: Path, session: Path, *, keep_journal: bool = False) -> Recording:
@@ -181,13 +69,13 @@ def write_session(recording: Recording, session: Path) -> None:
     aside = session.with_name(f".{session.name}.part")
     try:
         with h5py.File(aside, "w", libver=("v110", "v110")) as file:
-            _fill(file, recording)
+            wanted = _fill(file, recording)
         descriptor = os.open(aside, os.O_RDONLY)
         try:
             os.fsync(descriptor)
         finally:
             os.close(descriptor)
-        _compare(aside, recording)
+        _compare(aside, wanted)
         _name(aside, session)
         sync_folder(session.absolute().parent)
     except FileExistsError:
@@ -211,76 +99,70 @@ def _name(aside: Path, session: Path) -> None:
         aside.rename(session)
 
 
-def _fill(file: h5py.File, recording: Recording) -> None:
+def _fill(file: h5py.File, recording: Recording) -> digests.DigestingFile:
     header = recording.header
-    file.attrs["haltere_format"] = FORMAT
-    file.attrs["created_utc"] = str(header.get("created_utc", ""))
-    file.attrs["software"] = str(header.get("software", ""))
-    board = file.create_group("streams/board")
-    tick_hz = int(header["tick_hz"])
-    board.attrs["tick_hz"] = tick_hz
-    board.attrs["row_period_ticks"] = int(header.get("row_period_ticks", 0))
-    board.attrs["frame_rows"] = int(header.get("frame_rows", 0))
-    tick, raw = recording.tick, recording.raw
-    _column(board, "tick", tick)
-    since = (tick - tick[0]).astype(np.float64) / tick_hz if len(tick) else np.empty(0)
-    _column(board, "time_s", since)
-    _column(board, "status", recording.status)
-    for index, channel in enumerate(recording.channels):
-        data = _column(board, channel.name, raw[:, index])
-        for name in ("unit", "scale", "offset", "calibration", "measures", "delay_s", "low_raw", "high_raw"):
-            data.attrs[name] = getattr(channel, name)
-        data.attrs["column"] = index
-    events = file.create_group("events")
-    events["tick"] = np.array([event.tick for event in recording.events], dtype=np.uint64)
-    _texts(events, "kind", [event.kind for event in recording.events])
-    _texts(events, "data", [_event_text(event) for event in recording.events])
-    losses = file.create_group("losses")
-    for index, name in enumerate(("tick", "rows", "frames", "overruns")):
-        losses[name] = np.array([loss[index] for loss in recording.losses], dtype=np.uint64)
-    results = file.create_group("results")
-    results.create_dataset("live", data=json.dumps(recording.live), dtype=TEXT)
-    results.create_dataset("final", data=json.dumps(recording.final), dtype=TEXT)
-    for name in ("rig", "protocol"):
-        file.create_dataset(name, data=str(header.get(f"{name}_text", "")), dtype=TEXT)
-    file.create_dataset("header", data=json.dumps(header, default=str), dtype=TEXT)
-    calibrations = file.create_group("calibrations")
-    for name, text in dict(header.get("calibrations", {})).items():
-        calibrations.create_dataset(name, data=str(text), dtype=TEXT)
-
-
-def _column(group: h5py.Group, name: str, data: NDArray[Any]) -> h5py.Dataset:
-    chunk = (max(1, min(CHUNK_ROWS, len(data))),)
-    return group.create_dataset(
-        name, data=data, chunks=chunk, maxshape=(None,), shuffle=True, compression="gzip", compression_opts=1
+    book = digests.DigestingFile(file)
+    book.attribute_set(
+        "/",
+        {
+            "haltere_format": FORMAT,
+            "created_utc": str(header.get("created_utc", "")),
+            "software": str(header.get("software", "")),
+        },
     )
+    _fill_board(file, book, recording)
+    events = recording.events
+    book.numbers("/events/tick", np.array([event.tick for event in events], dtype=np.uint64))
+    book.texts("/events/kind", [event.kind for event in events])
+    book.texts("/events/data", [_event_text(event) for event in events])
+    for index, name in enumerate(("tick", "rows", "frames", "overruns")):
+        lost = np.array([loss[index] for loss in recording.losses], dtype=np.uint64)
+        book.numbers(f"/losses/{name}", lost)
+    book.text("/results/live", json.dumps(recording.live))
+    book.text("/results/final", json.dumps(recording.final))
+    book.attribute_set("/results/final", {"software": str(header.get("software", ""))})
+    for name in ("rig", "protocol"):
+        book.text(f"/{name}", str(header.get(f"{name}_text", "")))
+    book.text("/header", json.dumps(header, default=str))
+    file.create_group("calibrations")
+    for name, text in dict(header.get("calibrations", {})).items():
+        book.text(f"/calibrations/{name}", str(text))
+    book.finish()
+    return book
 
 
-def _texts(group: h5py.Group, name: str, texts: list[str]) -> None:
-    group.create_dataset(name, shape=(len(texts),), data=np.array(texts, dtype=object), dtype=TEXT)
+def _fill_board(file: h5py.File, book: digests.DigestingFile, recording: Recording) -> None:
+    header, pieces, shape = recording.header, recording.pieces, (len(recording),)
+    place, tick_hz = "/streams/board", int(header["tick_hz"])
+    file.create_group(place)
+    book.attribute_set(
+        place,
+        {
+            "tick_hz": tick_hz,
+            "row_period_ticks": int(header.get("row_period_ticks", 0)),
+            "frame_rows": int(header.get("frame_rows", 0)),
+        },
+    )
+    first = pieces[0].tick[0] if pieces else np.uint64(0)
+    since = ((piece.tick - first).astype(np.float64) / tick_hz for piece in pieces)
+    book.column(f"{place}/tick", shape, "u8", (piece.tick for piece in pieces))
+    book.column(f"{place}/time_s", shape, "f8", since)
+    book.column(f"{place}/status", shape, "u2", (piece.status for piece in pieces))
+    for index, channel in enumerate(recording.channels):
+        name = f"{place}/{channel.name}"
+        book.column(name, shape, "i4", recording.column(index))
+        told = {attribute: getattr(channel, attribute) for attribute in CHANNEL_ATTRIBUTES}
+        numbers = {attribute: float(told[attribute]) for attribute in ("scale", "offset", "delay_s")}
+        book.attribute_set(name, {**told, **numbers, "column": index})
 
 
 def _event_text(event: Event) -> str:
     return json.dumps(event.data, default=str)
 
 
-def _compare(path: Path, recording: Recording) -> None:
-    """What stands in the file must be what was in the journal."""
+def _compare(path: Path, wanted: digests.DigestingFile) -> None:
+    """What stands in the file must be what was in the journal, all of it."""
     with h5py.File(path, "r") as file:
-        board = file["streams/board"]
-        raw = recording.raw
-        same = (
-            np.array_equal(board["tick"][:], recording.tick)
-            and np.array_equal(board["status"][:], recording.status)
-            and all(
-                np.array_equal(board[channel.name][:], raw[:, index])
-                for index, channel in enumerate(recording.channels)
-            )
-        )
-        names = ("tick", "kind", "data")
-        events = list(zip(*(file[f"events/{name}"][:] for name in names), strict=True))
-        wanted = [
-            (event.tick, event.kind.encode(), _event_text(event).encode()) for event in recording.events
-        ]
-        if not same or events != wanted:
-            raise OSError(None, "what was read back differs from what was written")
+        found = digests.of_file(file)
+    if found != {"datasets": wanted.datasets, "attributes": wanted.attributes}:
+        raise OSError(None, "what was read back differs from what was written")

@@ -142,6 +142,7 @@ HEADERS = {
     "a channel twice": channel(name="crank"),
     "a channel without a name": channel(name=""),
     "a scale in words": channel(scale="x"),
+    "a scale beyond all numbers": channel(scale=10**400),
     "a unit that is a number": channel(unit=3),
 }
 
