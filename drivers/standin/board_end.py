@@ -204,7 +204,8 @@ class BoardEnd:
 
     def _beat(self, tick: int) -> None:
         newer = self._beat_tick is None or 0 < (tick - self._beat_tick) & 0xFFFFFFFF < 2**31
-        if not newer:
+        sampled = (self._now_tick() - tick) & 0xFFFFFFFF < 2**31
+        if not (newer and sampled):
             return
         self._beat_tick = tick
         self._beat_at = self._now_tick()

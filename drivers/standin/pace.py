@@ -20,6 +20,10 @@ class SlippingClock:
         self.slipped_s = 0.0
         self.pauses = 0
 
+    def begin(self) -> None:
+        """The serving loop begins: what came before was no pause."""
+        self._last_s = self._clock.now_s()
+
     def turn(self, waited_s: float) -> None:
         """Once a turn of the serving loop, which meant to wait `waited_s`."""
         now_s = self._clock.now_s()

@@ -16,7 +16,7 @@ def main(words: Sequence[str] | None = None) -> int:
     """Run one command; returns its exit code. Every error is told in sentences on stderr."""
     try:
         parsed = build().parse_args(words)
-        module = import_module(f"rig.command.{parsed.command}")
+        module = import_module(f"rig.command.{parsed.command.replace('-', '_')}")
         return int(module.main(parsed))
     except CommandError as error:
         _tell(str(error))

@@ -18,6 +18,7 @@ COMMANDS = {
     "analyse": "estimate everything again from the raw rows of a session",
     "report": "write the report of a session",
     "recover": "seal the journal of a run that was cut off",
+    "stand-in": "serve a simulated rig in a board's own bytes on a pseudo-terminal or a TCP port",
     "about": "tell versions, serial ports and whether the installation is sound",
 }
 
@@ -73,6 +74,25 @@ def build() -> argparse.ArgumentParser:
     recover = made["recover"]
     recover.add_argument("journal", metavar="JOURNAL")
     recover.add_argument("--out", metavar="FILE", help="session file (default: beside the journal)")
+
+    stand_in = made["stand-in"]
+    stand_in.add_argument(
+        "rig", metavar="RIG", help="a rig file with constants, or the name of a shipped one"
+    )
+    where = stand_in.add_mutually_exclusive_group()
+    where.add_argument(
+        "--tcp", metavar="PORT", type=int, help="serve on this TCP port of this machine (0: any free)"
+    )
+    where.add_argument("--link", metavar="PATH", help="name for the pseudo-terminal that stays the same")
+    stand_in.add_argument("--seed", type=int, help="seed of the simulated disturbances")
+    stand_in.add_argument(
+        "--fault",
+        metavar="TEXT",
+        action="append",
+        default=[],
+        help="let something go wrong, e.g. 'open_guard at 12 s'; also one a line on standard input",
+    )
+    stand_in.add_argument("--log", metavar="FILE", help="what happens at the board, as JSON lines")
 
     made["about"].add_argument("--json", action="store_true", help="as JSON on stdout")
     return parser
