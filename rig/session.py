@@ -9,6 +9,7 @@ Only `rig.session` and `rig.record` know HDF5.
 
 from __future__ import annotations
 
+import functools
 import itertools
 import json
 import math
@@ -24,14 +25,17 @@ from numpy.typing import NDArray
 from drivers.channels import Channel, ChannelTable
 from drivers.rows import RowBlock
 from rig.events import Event
+from rig.record import overview
 from rig.record.errors import Damaged
+from rig.record.inspection import inspect
+from rig.record.rowclock import RowClock
 
 if TYPE_CHECKING:
     from rig.description import RigDescription
     from rig.steps import Protocol
 
-#: A compressed stream is never larger than this many times its file.
-MOST_EXPANSION = 2000
+#: Rows read at a time where a column is gone through: whole chunks of the file.
+READ_ROWS = 1 << 16
 
 
 class Stream:
@@ -67,7 +71,7 @@ class Stream:
             tick = self._read("tick")
             if np.any(tick[1:] <= tick[:-1]):
                 del self._cache["tick"]
-                raise Damaged(f"{self._path}: the ticks of stream {self._group.name} do not increase")
+                raise self._backward()
         return self._cache["tick"]
 
     @property
@@ -97,43 +101,109 @@ class Stream:
         column = self.channels.measuring(measures)
         return None if column is None else self[self.channels[column].name]
 
+    def overview(
+        self, name: str, start_tick: int, end_tick: int, bins: int
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
+        """Time, smallest and largest value of a channel from start_tick up to end_tick, at least `bins` of each
+        if there are as many rows: s since the first row, of the first row of each bin; unit of the channel.
+
+        Bins of 16, 256 ... rows where these are enough, else the rows themselves (low = high). Bins at both
+        ends are whole. No more is read than is told. KeyError if there is no such channel.
+        """
+        channel = self.channels[self.channels.index(name)]
+        if bins < 1:
+            raise ValueError("an overview needs at least one bin")
+        first, end = self._row(start_tick), self._row(end_tick)
+        if end <= first:
+            return np.empty(0), np.empty(0), np.empty(0)
+        size = overview.coarsest(overview.levels(len(self)), first, end, bins)
+        first_bin, end_bin = first // size, overview.bins_of(end, size)
+        pairs = self._bins(name, size, first_bin, end_bin)
+        values = channel.values(pairs)
+        values.sort(axis=1)  # a negative scale turns them round
+        return self._times_s(np.arange(first_bin, end_bin) * size), values[:, 0], values[:, 1]
+
+    def _bins(self, name: str, size: int, first: int, end: int) -> NDArray[np.int32]:
+        place = f"/overview{self._group.name.removeprefix('/streams')}/{name}/{size}"
+        if size > 1 and place in self._group.file:
+            level = self._group.file[place]
+            if level.dtype != np.dtype("i4") or level.shape != (overview.bins_of(len(self), size), 2):
+                raise Damaged(f"{self._path}: {place} does not belong to its column")
+            return self._part(level, first, end)
+        return overview.of_rows(self._part(self._group[name], first * size, end * size), size)
+
+    @functools.cached_property
+    def _clock(self) -> RowClock | None:
+        """The rows' times without their column; None where only the column can tell."""
+        if not len(self):
+            return None
+        first, last = (int(self._part(self._group["tick"], row, row + 1)[0]) for row in (0, len(self) - 1))
+        lost = [(loss[0], loss[1]) for loss in self.losses if loss[1]]
+        try:
+            return RowClock(first, last, len(self), self.row_period_ticks, lost)
+        except (ValueError, OverflowError):
+            return None
+
+    def _row(self, tick: int) -> int:
+        """The first row at or after a tick."""
+        if self._clock is not None:
+            return self._clock.row(tick)
+        return int(np.searchsorted(self.tick, np.uint64(min(max(tick, 0), 2**64 - 1))))
+
+    def _times_s(self, rows: NDArray[np.int64]) -> NDArray[np.float64]:
+        if self._clock is not None:
+            return (self._clock.tick(rows) - self._clock.tick(np.array([0]))) / self.tick_hz
+        return (self.tick[rows] - self.tick[0]).astype(np.float64) / self.tick_hz
+
     def blocks(self, rows_per_block: int) -> Iterator[RowBlock]:
-        """The rows again as blocks, in order, for analysis and replay.
+        """The rows again as blocks, in order, for analysis and replay; read as they are asked for.
 
         A block ends early where the status changes or rows were lost, so that what it says holds for all its
         rows; the loss is told in the block after it.
         """
         if rows_per_block < 1:
             raise ValueError("a block needs at least one row")
-        tick, status = self.tick, self.status
-        if not len(tick):
-            return
-        raw = np.column_stack([self.raw(channel.name) for channel in self.channels]).astype(np.int32)
         lost = {when: (rows, frames) for when, rows, frames, _ in self.losses}
-        cuts = np.flatnonzero(np.diff(status)) + 1
-        gaps = np.flatnonzero(np.isin(tick, np.array(list(lost), dtype=np.uint64)))
-        edges = np.unique(np.concatenate(([0, len(tick)], cuts, gaps)))
-        for first, last in itertools.pairwise(edges):
-            for start in range(first, last, rows_per_block):
-                part = slice(start, min(start + rows_per_block, last))
-                rows, frames = lost.get(int(tick[start]), (0, 0))
-                yield RowBlock(
-                    tick=tick[part],
-                    raw=raw[part],
-                    status=int(status[start]),
-                    lost_rows=rows,
-                    lost_frames=frames,
-                )
+        at_once = rows_per_block * -(-READ_ROWS // rows_per_block)
+        before = -1
+        for start in range(0, len(self), at_once):
+            tick, status = (self._part(self._group[n], start, start + at_once) for n in ("tick", "status"))
+            if int(tick[0]) <= before or np.any(tick[1:] <= tick[:-1]):
+                raise self._backward()
+            before = int(tick[-1])
+            columns = [
+                self._part(self._group[channel.name], start, start + at_once) for channel in self.channels
+            ]
+            raw = np.column_stack(columns).astype(np.int32)
+            cuts = np.flatnonzero(np.diff(status)) + 1
+            gaps = np.flatnonzero(np.isin(tick, np.array(list(lost), dtype=np.uint64)))
+            edges = np.unique(np.concatenate(([0, len(tick)], cuts, gaps)))
+            for first, last in itertools.pairwise(edges):
+                for begin in range(first, last, rows_per_block):
+                    part = slice(begin, min(begin + rows_per_block, last))
+                    rows, frames = lost.get(int(tick[begin]), (0, 0))
+                    yield RowBlock(
+                        tick=tick[part],
+                        raw=raw[part],
+                        status=int(status[begin]),
+                        lost_rows=rows,
+                        lost_frames=frames,
+                    )
 
     def _read(self, name: str) -> NDArray[Any]:
-        # Columns are read late, so damage inside one shows only here.
         if name not in self._cache:
-            try:
-                self._cache[name] = self._group[name][:]
-            except (OSError, RuntimeError):
-                where = f"{self._group.name}/{name}"
-                raise Damaged(f"{self._path}: {where} cannot be read, its data are damaged") from None
+            self._cache[name] = self._part(self._group[name], 0, len(self))
         return self._cache[name]
+
+    def _part(self, data: h5py.Dataset, first: int, end: int) -> NDArray[Any]:
+        # Columns are read late, so damage inside one shows only here.
+        try:
+            return data[first:end]
+        except (OSError, RuntimeError):
+            raise Damaged(f"{self._path}: {data.name} cannot be read, its data are damaged") from None
+
+    def _backward(self) -> Damaged:
+        return Damaged(f"{self._path}: the ticks of stream {self._group.name} do not increase")
 
 
 class Session:
@@ -211,7 +281,7 @@ def open_session(path: str | Path) -> Session:
             raise Damaged(f"{path} is not a Haltere session")
         if int(file.attrs["haltere_format"]) != 1:
             raise Damaged(f"{path} is a session of a format this version does not read")
-        _inspect(file, place)
+        inspect(file, place)
         return Session(place, file)
     except Damaged:
         file.close()
@@ -223,43 +293,6 @@ def open_session(path: str | Path) -> Session:
         file.close()
         words = str(error).strip("'\"").split("\n")[0]
         raise Damaged(f"{path} is damaged: {words}") from None
-
-
-def _inspect(file: h5py.File, path: Path) -> None:
-    """Refuse what could lead out of the file or fill the memory before anything is read."""
-    size = path.stat().st_size
-    seen: set[int] = set()
-
-    def look(group: h5py.Group) -> None:
-        for name in group:
-            link = group.get(name, getlink=True)
-            if not isinstance(link, h5py.HardLink):
-                raise Damaged(f"{path}: {group.name}/{name} links to another place")
-            item = group[name]
-            # A group reached twice could hold itself, or groups without end.
-            address = h5py.h5o.get_info(item.id).addr
-            if address in seen:
-                raise Damaged(f"{path}: {group.name}/{name} stands in two places")
-            seen.add(address)
-            if isinstance(item, h5py.Group):
-                look(item)
-                continue
-            if item.is_virtual or item.external:
-                raise Damaged(f"{path}: {item.name} keeps its data in another file")
-            if item.size and item.size * item.dtype.itemsize > MOST_EXPANSION * size + 2**20:
-                raise Damaged(f"{path}: {item.name} claims {item.size} values, more than the file can hold")
-
-    seen.add(h5py.h5o.get_info(file.id).addr)
-    look(file)
-    if "board" not in file["streams"]:
-        raise Damaged(f"{path} has no stream of the board")
-    for stream in file["streams"].values():
-        for name, data in stream.items():
-            wanted = {"tick": "u8", "time_s": "f8", "status": "u2"}.get(name, "i4")
-            if data.ndim != 1 or data.dtype != np.dtype(wanted):
-                raise Damaged(
-                    f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
-                )
 
 
 def _object(text: str | bytes, what: str) -> dict[str, Any]:

@@ -7,6 +7,8 @@
                            low_raw, high_raw: value = raw * scale + offset
     /streams/board/status  uint16, `drivers.rows.Status` bits
                            (the group's attributes: tick_hz, row_period_ticks, frame_rows)
+    /overview/board/NAME/ROWS   int32, (bins, 2): smallest and largest raw value of every ROWS rows
+                           (16, 256, 4096 ...; `rig.record.overview`), for drawing
     /events/tick, kind, data      one entry an event; data is JSON text
     /losses/tick, rows, frames, overruns   lost before the row at that tick
     /results/live, /results/final          JSON texts; the attribute software of final: what worked it out
@@ -31,7 +33,7 @@ import h5py
 import numpy as np
 
 from rig.events import Event
-from rig.record import digests
+from rig.record import digests, overview
 from rig.record.durability import lock, sync_folder
 from rig.record.errors import JournalFailure, NameTaken
 from rig.record.recording import Recording, read_recording
@@ -154,6 +156,8 @@ def _fill_board(file: h5py.File, book: digests.DigestingFile, recording: Recordi
         told = {attribute: getattr(channel, attribute) for attribute in CHANNEL_ATTRIBUTES}
         numbers = {attribute: float(told[attribute]) for attribute in ("scale", "offset", "delay_s")}
         book.attribute_set(name, {**told, **numbers, "column": index})
+        for rows_per_bin, bins in overview.pyramid(recording.column(index), len(recording)).items():
+            book.column(f"/overview/board/{channel.name}/{rows_per_bin}", bins.shape, "i4", [bins])
 
 
 def _event_text(event: Event) -> str:

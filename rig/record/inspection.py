@@ -1,0 +1,50 @@
+"""What a session file must not be, found before anything is read from it."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import h5py
+import numpy as np
+
+from rig.record.errors import Damaged
+
+#: A compressed stream is never larger than this many times its file.
+MOST_EXPANSION = 2000
+
+
+def inspect(file: h5py.File, path: Path) -> None:
+    """Damaged for what could lead out of the file or fill the memory, and for columns of the wrong kind."""
+    size = path.stat().st_size
+    seen: set[int] = set()
+
+    def look(group: h5py.Group) -> None:
+        for name in group:
+            link = group.get(name, getlink=True)
+            if not isinstance(link, h5py.HardLink):
+                raise Damaged(f"{path}: {group.name}/{name} links to another place")
+            item = group[name]
+            # A group reached twice could hold itself, or groups without end.
+            address = h5py.h5o.get_info(item.id).addr
+            if address in seen:
+                raise Damaged(f"{path}: {group.name}/{name} stands in two places")
+            seen.add(address)
+            if isinstance(item, h5py.Group):
+                look(item)
+                continue
+            if item.is_virtual or item.external:
+                raise Damaged(f"{path}: {item.name} keeps its data in another file")
+            if item.size and item.size * item.dtype.itemsize > MOST_EXPANSION * size + 2**20:
+                raise Damaged(f"{path}: {item.name} claims {item.size} values, more than the file can hold")
+
+    seen.add(h5py.h5o.get_info(file.id).addr)
+    look(file)
+    if "board" not in file["streams"]:
+        raise Damaged(f"{path} has no stream of the board")
+    for stream in file["streams"].values():
+        for name, data in stream.items():
+            wanted = {"tick": "u8", "time_s": "f8", "status": "u2"}.get(name, "i4")
+            if data.ndim != 1 or data.dtype != np.dtype(wanted):
+                raise Damaged(
+                    f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
+                )
