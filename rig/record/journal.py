@@ -21,6 +21,7 @@ ever comes out, and all before it does.
 
 from __future__ import annotations
 
+import contextlib
 import json
 import os
 import struct
@@ -32,16 +33,16 @@ from typing import Any
 
 from drivers.rows import RowFrame
 from rig.events import Event
-from rig.record.durability import Disk, OsDisk, PeriodicSync, lock
+from rig.record.durability import Disk, OsDisk, WriteBehind, free_bytes, lock, sync_folder
 from rig.record.errors import Damaged, JournalFailure, NameTaken
 
 MAGIC = b"HLTRJNL\x01"
 HEAD = struct.Struct("<BII")
 CRC = struct.Struct("<I")
 LONGEST = 64 * 2**20  # no record is longer; a length beyond is damage
-BATCH_BYTES = 1 << 15
 
 HEADER, FRAME, EVENT, RESULT, LOSSES, END = 1, 2, 3, 4, 5, 6
+AT_ONCE = (EVENT, RESULT)  # rare, and somebody waits for them: written without waiting for more
 
 
 def encode(kind: int, sequence: int, payload: bytes) -> bytes:
@@ -55,56 +56,82 @@ def to_json(fields: dict[str, Any]) -> bytes:
 
 
 class JournalWriter:
-    """Appends records to a new file. Records are written in batches and synced from a thread of their own.
+    """Appends records to a new file; a thread of its own writes and syncs them, so that no call waits for a disk.
 
     Raises NameTaken if the file exists, JournalFailure when there is less than `reserve_bytes` to begin with
-    and when writing or syncing fails: then nothing more is taken, and what was written stays good. Space that
-    runs low during the run shows in `free_bytes`, for the interlocks to end the run in time.
+    and, from the next call on, when writing or syncing failed or more than `backlog_bytes` wait for a disk that is
+    too slow: then nothing more is taken, and what was written stays good. Space that runs low during the run shows
+    in `free_bytes`, for the interlocks to end the run in time.
+
+    Only the constructor, `flush` and `close` wait for the disk.
     """
 
     def __init__(
-        self, path: Path, header: dict[str, Any], *, disk: Disk | None = None, reserve_bytes: float = 0.0
+        self,
+        path: Path,
+        header: dict[str, Any],
+        *,
+        disk: Disk | None = None,
+        reserve_bytes: float = 0.0,
+        backlog_bytes: int = 32_000_000,
     ) -> None:
         self.path = path
-        self._disk = disk or OsDisk()
-        self._free = self._free_now()
-        if self._free < reserve_bytes:
+        disk = disk or OsDisk()
+        folder = path.absolute().parent
+        free = free_bytes(disk, folder)
+        if free < reserve_bytes:
             raise JournalFailure(
-                f"only {self._free / 1e6:.0f} MB are left on the disk of {path}, less than the reserve of "
+                f"only {free / 1e6:.0f} MB are left on the disk of {path}, less than the reserve of "
                 f"{reserve_bytes / 1e6:.0f} MB"
             )
+        first = to_json(header)
+        taken = f"{path} is there already: another run, or one that was cut off (see 'haltere recover')"
         try:
             flags = os.O_WRONLY | os.O_CREAT | os.O_EXCL | os.O_APPEND
             self._descriptor = os.open(path, flags, 0o644)
         except FileExistsError:
-            raise NameTaken(
-                f"{path} is there already: another run, or one that was cut off (see 'haltere recover')"
-            ) from None
+            raise NameTaken(taken) from None
         except OSError as error:
             raise JournalFailure(f"{path} cannot be created: {error.strerror}") from error
-        lock(self._descriptor)
-        self._buffer = bytearray(MAGIC)
-        self._length = 0
-        self._sequence = 0
         self._closed = False
-        self._failed = ""
-        self._sync = PeriodicSync(self._disk, self._descriptor)
         try:
-            self._append(HEADER, to_json(header))
+            if not lock(self._descriptor):
+                raise NameTaken(taken)
+            sync_folder(folder)
+            self._behind = WriteBehind(disk, self._descriptor, folder, backlog_bytes)
+        except BaseException:
+            os.close(self._descriptor)
+            raise
+        try:
+            self._append(HEADER, first)
             self.flush()
-        except JournalFailure:
+        except BaseException:
             self.close(ended=False)
+            with contextlib.suppress(
+                OSError
+            ):  # without its header it is nothing, and would only be in the way
+                path.unlink()
             raise
 
     @property
+    def written(self) -> int:
+        """Bytes of the file handed to the operating system: there even if this process is killed."""
+        return self._behind.written
+
+    @property
     def committed(self) -> int:
-        """Bytes of the file known to be on the disk."""
-        return self._sync.committed
+        """Bytes of the file known to be on the disk: there even after a power cut."""
+        return self._behind.committed
+
+    @property
+    def committed_sequence(self) -> int:
+        """Sequence of the last record known to be on the disk; -1 if there is none."""
+        return self._behind.committed_pieces - 1
 
     @property
     def free_bytes(self) -> int:
-        """Free space on the disk when last looked at (once a megabyte)."""
-        return self._free
+        """Free space on the disk when last looked at (once a megabyte, and once a second while rows come)."""
+        return self._behind.free_bytes
 
     def frame(self, frame: RowFrame) -> None:
         self._append(FRAME, frame.pack())
@@ -119,26 +146,9 @@ class JournalWriter:
         self._append(RESULT, to_json(fields))
 
     def flush(self) -> None:
-        """Hand everything to the operating system."""
-        self._refuse_after_failure()
-        if not self._buffer:
-            return
-        data = bytes(self._buffer)
-        self._buffer.clear()
-        sent = 0
-        while sent < len(data):
-            try:
-                sent += self._disk.write(self._descriptor, data[sent:])
-            except OSError as error:
-                self._failed = f"{self.path} cannot be written: {error.strerror or error}"
-                raise JournalFailure(self._failed) from error
-        if self._length // 2**20 != (self._length + sent) // 2**20:
-            self._free = self._free_now()
-        self._length += sent
-        self._sync.wrote(self._length)
-        if self._sync.failure is not None:
-            self._failed = f"{self.path} cannot be written: {self._sync.failure.strerror}"
-            raise JournalFailure(self._failed) from self._sync.failure
+        """Wait until everything handed in so far is with the operating system."""
+        if not self._behind.wait():
+            raise self._failure()
 
     def close(self, ended: bool = True) -> None:
         """Write the end record (unless the run broke off), sync, and close; safe to call again."""
@@ -147,35 +157,27 @@ class JournalWriter:
         try:
             if ended:
                 self._append(END, b"{}")
-                self.flush()
-            elif not self._failed:
-                self.flush()
         finally:
             self._closed = True
-            self._sync.stop()
+            self._behind.stop()
             os.close(self._descriptor)
-        if ended and self._sync.failure is not None:
-            raise JournalFailure(f"{self.path} cannot be written: {self._sync.failure.strerror}")
+        if ended and self._behind.failure:
+            raise self._failure()
 
     def _append(self, kind: int, payload: bytes) -> None:
         if self._closed:
             raise JournalFailure(f"{self.path} is closed")
-        self._refuse_after_failure()
-        self._buffer += encode(kind, self._sequence, payload)
-        self._sequence += 1
-        if len(self._buffer) >= BATCH_BYTES:
-            self.flush()
+        if len(payload) > LONGEST:
+            raise JournalFailure(f"{self.path} takes no record of {len(payload) / 1e6:.0f} MB")
+        if not self._behind.put(
+            lambda number: (b"" if number else MAGIC) + encode(kind, number, payload),
+            urgent=kind in AT_ONCE,
+        ):
+            # A record after a torn one would never be read; pretending to take it would be a lie.
+            raise self._failure()
 
-    def _refuse_after_failure(self) -> None:
-        # A record after a torn one would never be read; pretending to take it would be a lie.
-        if self._failed:
-            raise JournalFailure(self._failed)
-
-    def _free_now(self) -> int:
-        try:
-            return self._disk.free_bytes(self.path.absolute().parent)
-        except OSError:
-            return 2**62  # a file system that cannot tell: the write itself will
+    def _failure(self) -> JournalFailure:
+        return JournalFailure(f"{self.path} cannot be written: {self._behind.failure}")
 
 
 @dataclass(frozen=True)
