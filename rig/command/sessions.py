@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import asdict, replace
 from importlib.metadata import version
 from pathlib import Path
@@ -12,10 +12,12 @@ from typing import Any
 
 from drivers.clock import Clock
 from drivers.errors import BenchError
+from drivers.rows import RowBlock
 from rig.command.exits import CommandError, Exit
 from rig.command.moment import utc_text
 from rig.description import RigDescription
 from rig.evaluation.analyst import Analyst
+from rig.events import Event
 from rig.record.errors import Damaged, JournalFailure, NameTaken
 from rig.record.journal import JournalWriter
 from rig.record.sealing import seal
@@ -23,6 +25,7 @@ from rig.results import SessionResult
 from rig.run.loop import Loop, Operator, Progress, RunOutcome
 from rig.session import Session, open_session
 from rig.steps import Protocol
+from rig.verdicts import Verdict, verdict_to_json
 
 
 def software() -> str:
@@ -41,6 +44,20 @@ def with_seed(rig: RigDescription, seed: int | None) -> RigDescription:
     if not 0 <= seed < 2**31:
         raise CommandError(f"--seed {seed}: expected a whole number from 0 to {2**31 - 1}")
     return replace(rig, world=replace(rig.world, seed=seed))
+
+
+class JournalledAnalyst:
+    """An analyst whose verdicts are written down as they are told."""
+
+    def __init__(self, analyst: Analyst, journal: JournalWriter) -> None:
+        self._analyst = analyst
+        self._journal = journal
+
+    def feed(self, blocks: Sequence[RowBlock], events: Sequence[Event]) -> list[Verdict]:
+        verdicts = self._analyst.feed(blocks, events)
+        for verdict in verdicts:
+            self._journal.result({"which": "live", **verdict_to_json(verdict)})
+        return verdicts
 
 
 def run_session(
@@ -95,17 +112,16 @@ def run_session(
     if started is not None:
         started()
     analyst = Analyst(rig, hello.channels, hello.tick_hz)
+    told = JournalledAnalyst(analyst, journal)
     ended = False
     try:
         outcome = Loop(
-            bench, hello, rig, protocol, journal, analyst, clock, progress, operator, by=acknowledged_by
+            bench, hello, rig, protocol, journal, told, clock, progress, operator, by=acknowledged_by
         ).run()
         bench.close()
         result = analyst.finish()
-        fields = result.to_json()
         try:
-            journal.result({"which": "live", "levels": fields["levels"]})
-            journal.result({"which": "final", **fields})
+            journal.result({"which": "final", **result.to_json()})
             ended = True
         except JournalFailure as error:
             outcome = replace(outcome, exit_code=outcome.exit_code or int(Exit.HALTED), reason=str(error))

@@ -11,7 +11,9 @@
                            (16, 256, 4096 ...; `rig.record.overview`), for drawing
     /events/tick, kind, data      one entry an event; data is JSON text
     /losses/tick, rows, frames, overruns   lost before the row at that tick
-    /results/live, /results/final          JSON texts; the attribute software of final: what worked it out
+    /results/live          JSON list of all verdicts in the order they were told (`rig.verdicts`)
+    /results/final         JSON of the results (`rig.results`), null if the run was cut off; its attribute
+                           software: what worked it out
     /rig, /protocol, /header      texts as they were when the run began
     /calibrations/NAME            texts
     /digests               JSON text, SHA-256 of each dataset and of all attributes (`rig.record.digests`)
