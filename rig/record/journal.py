@@ -26,7 +26,7 @@ import json
 import os
 import struct
 import zlib
-from collections.abc import Iterator
+from collections.abc import Generator, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -40,6 +40,7 @@ MAGIC = b"HLTRJNL\x01"
 HEAD = struct.Struct("<BII")
 CRC = struct.Struct("<I")
 LONGEST = 64 * 2**20  # no record is longer; a length beyond is damage
+READ_BYTES = 1 << 20  # read at once
 
 HEADER, FRAME, EVENT, RESULT, LOSSES, END = 1, 2, 3, 4, 5, 6
 AT_ONCE = (EVENT, RESULT)  # rare, and somebody waits for them: written without waiting for more
@@ -197,11 +198,71 @@ class Record:
         return found
 
 
-class Journal:
-    """The intact part of a journal file.
+class RecordStream:
+    """Intact records out of bytes as they come, whatever pieces they come in; knows nothing of files.
 
-    Damaged if not even the header can be read; FileNotFoundError as usual. After iteration `ended` tells
-    whether the end record was there, `damage` where and why reading stopped ("" if at the end).
+    The bytes are those after the magic. Nothing after a damage is believed: `damage` then says what and where,
+    and no record comes any more. `offset` is that of the first byte that is not yet part of an intact record.
+    """
+
+    def __init__(self) -> None:
+        self.offset = len(MAGIC)
+        self.ended = False
+        self.damage = ""
+        self._bytes = bytearray()
+        self._start = 0
+        self._sequence = 0
+
+    @property
+    def left(self) -> int:
+        """Bytes that came and are no whole record yet."""
+        return len(self._bytes) - self._start
+
+    def feed(self, data: bytes) -> None:
+        del self._bytes[: self._start]
+        self._start = 0
+        self._bytes += data
+
+    def take(self) -> Record | None:
+        """The next intact record; None if there is none (yet)."""
+        data, start = self._bytes, self._start
+        if self.damage or self.ended or self.left < HEAD.size:
+            return None
+        kind, length, sequence = HEAD.unpack_from(data, start)
+        if sequence != self._sequence or not HEADER <= kind <= END or length > LONGEST:
+            self.damage = f"damaged record head at byte {self.offset}"
+            return None
+        size = HEAD.size + length + CRC.size
+        if self.left < size:
+            return None
+        body = start + HEAD.size
+        payload = bytes(data[body : body + length])
+        (crc,) = CRC.unpack_from(data, body + length)
+        if crc != zlib.crc32(payload, zlib.crc32(data[start:body])):
+            self.damage = f"damaged record at byte {self.offset}"
+            return None
+        self._start += size
+        self._sequence += 1
+        self.offset += size
+        self.ended = kind == END
+        return Record(kind, sequence, payload, self.offset)
+
+
+def magic_fault(start: bytes) -> str:
+    """What is wrong with the first bytes of a file, as the end of a sentence; "" if nothing is."""
+    if start[: len(MAGIC) - 1] != MAGIC[:-1]:
+        return "is not a Haltere journal"
+    if start[len(MAGIC) - 1 : len(MAGIC)] != MAGIC[-1:]:
+        return "is a journal of a format this version does not read"
+    return ""
+
+
+class Journal:
+    """The intact part of a journal file, read piece by piece: a few MB of memory, whatever its length.
+
+    Damaged if not even the header can be read; FileNotFoundError as usual. During iteration `good_bytes` counts
+    what was intact; after it `ended` tells whether the end record was there, `damage` where and why reading
+    stopped ("" if at the end). A disk that cannot be read any further is damage too.
     """
 
     def __init__(self, path: Path) -> None:
@@ -209,12 +270,15 @@ class Journal:
         self.ended = False
         self.damage = ""
         self.good_bytes = 0
-        self._data = path.read_bytes()
-        if self._data[: len(MAGIC) - 1] != MAGIC[:-1]:
-            raise Damaged(f"{path} is not a Haltere journal")
-        if self._data[len(MAGIC) - 1 : len(MAGIC)] != MAGIC[-1:]:
-            raise Damaged(f"{path} is a journal of a format this version does not read")
-        first = next(iter(self), None)
+        with path.open("rb") as file:
+            try:
+                start = file.read(len(MAGIC))
+            except OSError as error:
+                raise Damaged(f"{path} cannot be read: {error.strerror or error}") from error
+        if fault := magic_fault(start):
+            raise Damaged(f"{path} {fault}")
+        with contextlib.closing(self._records()) as records:
+            first = next(records, None)
         if first is None or first.kind != HEADER:
             raise Damaged(f"{path}: the journal's header is damaged, nothing can be recovered")
         try:
@@ -223,34 +287,28 @@ class Journal:
             raise Damaged(f"{path}: the journal's header is not readable, nothing can be recovered") from None
 
     def __iter__(self) -> Iterator[Record]:
-        data, offset, sequence = self._data, len(MAGIC), 0
-        self.ended, self.damage = False, ""
-        while True:
-            self.good_bytes = offset
-            left = len(data) - offset
-            if left == 0:
-                return
-            if self.ended:
-                self.damage = f"{left} bytes follow the end record"
-                return
-            if left < HEAD.size:
-                self.damage = f"cut off in a record at byte {offset}"
-                return
-            kind, length, number = HEAD.unpack_from(data, offset)
-            body = offset + HEAD.size
-            end = body + length + CRC.size
-            if number != sequence or not HEADER <= kind <= END or length > LONGEST:
-                self.damage = f"damaged record head at byte {offset}"
-                return
-            if end > len(data):
-                self.damage = f"cut off in a record at byte {offset}"
-                return
-            payload = data[body : body + length]
-            (crc,) = CRC.unpack_from(data, body + length)
-            if crc != zlib.crc32(payload, zlib.crc32(data[offset:body])):
-                self.damage = f"damaged record at byte {offset}"
-                return
-            self.ended = kind == END
-            yield Record(kind, number, payload, end)
-            offset = end
-            sequence += 1
+        return self._records()
+
+    def _records(self) -> Generator[Record, None, None]:
+        # Not mapped into memory: a bad sector under a mapping ends the process where a read gives an error.
+        stream = RecordStream()
+        self.ended, self.damage, self.good_bytes = False, "", stream.offset
+        with self.path.open("rb", buffering=0) as file:
+            size = os.fstat(file.fileno()).st_size
+            file.seek(len(MAGIC))
+            data: bytes | None = b"more"
+            while data and not stream.damage and not stream.ended:
+                try:
+                    data = file.read(READ_BYTES)
+                except OSError as error:
+                    self.damage = f"not readable after byte {stream.offset}: {error.strerror or error}"
+                    return
+                stream.feed(data or b"")
+                while (record := stream.take()) is not None:
+                    self.good_bytes, self.ended = record.end, stream.ended
+                    yield record
+        self.damage = stream.damage
+        if stream.ended and size > stream.offset:
+            self.damage = f"{size - stream.offset} bytes follow the end record"
+        elif stream.left and not stream.damage:
+            self.damage = f"cut off in a record at byte {stream.offset}"
