@@ -40,8 +40,13 @@ def bench_for(rig: RigDescription, clock: Clock) -> Bench:
     """
     if rig.driver == "none":
         raise BenchMisuse(f"{rig.name} has no driver: it is described for analysis only")
+    if rig.driver == "board":
+        from drivers.board import BoardBench
+        from drivers.ports import open_wire
+
+        return BoardBench(lambda: open_wire(rig.port, rig.baud), clock)
     if rig.driver != "simulated":
-        raise BenchMisuse(f"no driver is called {rig.driver!r}; this version knows 'simulated'")
+        raise BenchMisuse(f"no driver is called {rig.driver!r}; this version knows 'simulated' and 'board'")
     if rig.mechanism is None:
         raise BenchMisuse(f"{rig.name} gives no constants of a mechanism, so it cannot be simulated")
     # Late: the numeric kernels take time to load, and most commands need no bench.

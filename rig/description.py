@@ -126,7 +126,7 @@ class RigDescription:
 
     name: str
     title: str
-    driver: str  # "simulated", later: board drivers
+    driver: str  # "simulated", "board", or "none" for analysis only
     sample_hz: float
     frame_rows: int
     tick_hz: int
@@ -143,6 +143,8 @@ class RigDescription:
     tapper: bool = True
     releaser: bool = True
     sync_line: bool = True
+    port: str = ""  # of a board: a device, or socket://HOST:PORT
+    baud: int = 1_000_000
     sha256: str = ""  # of the file text
     text: str = ""  # the file as read
 

@@ -28,6 +28,7 @@ turning         -                          drive is off, the crank still turns
 standstill      coast_s
 loss            rows, frames, overruns
 notice          anything the board told
+clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s    board clock against host clock
 finished        exit_code, reason
 """
 

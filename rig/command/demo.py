@@ -31,7 +31,7 @@ def main(words: argparse.Namespace) -> Exit:
     _make_room(session, report, protocol.sha256)
     duration_s = forecast(rig, protocol).duration_s
     if not words.quiet:
-        show_cautions(rig)
+        show_cautions(False, rig.name)
     with RunProgress(duration_s, quiet=words.quiet) as progress:
         outcome, result = run_session(
             rig, protocol, session, VirtualClock(), pace="fast", progress=progress, operator=progress

@@ -52,6 +52,7 @@ def build() -> argparse.ArgumentParser:
     run.add_argument("--rig", required=True, metavar="RIG", help="a rig file, or the name of a shipped one")
     run.add_argument("--out", metavar="FILE", help="session file (default: RIG-PROTOCOL.h5)")
     run.add_argument("--pace", choices=("fast", "real"), default="fast", help="for simulated rigs")
+    run.add_argument("--port", metavar="PORT", help="on the board at this port or socket://HOST:PORT instead")
     run.add_argument("--seed", type=int, help="seed of the simulated disturbances")
     run.add_argument("--acknowledge", metavar="NAME", help="the cautions were read and understood by NAME")
     run.add_argument("--report", metavar="HTML", help="write the report there as well")

@@ -6,57 +6,87 @@ import argparse
 import sys
 from pathlib import Path
 
-from drivers.clock import Clock, HostClock, VirtualClock
+from drivers.clock import VirtualClock
+from rig.bench.job import Job
+from rig.command.bench_run import run_on_bench
 from rig.command.exits import CommandError, Exit
+from rig.command.moment import utc_s, utc_text
 from rig.command.progress import RunProgress
-from rig.command.sessions import opened, report_session, run_session, with_seed
+from rig.command.sessions import opened, report_session, run_session, software, with_seed
 from rig.command.table import summary
 from rig.description import RigDescription
 from rig.files import read_pair
 from rig.files.forecast import forecast
+from rig.run.loop import RunOutcome
 from rig.shipped import find
+from rig.steps import Protocol
 
 
 def main(words: argparse.Namespace) -> Exit:
     rig, protocol = read_pair(find(words.rig), find(words.protocol))
     rig = with_seed(rig, words.seed)
-    if not rig.simulated and not words.acknowledge:
+    in_process = rig.simulated and not words.port and words.pace == "fast"
+    powered = bool(words.port) or not rig.simulated
+    if powered and not words.acknowledge:
         raise CommandError("a powered rig needs --acknowledge NAME: the cautions must be read and understood")
     out = Path(words.out) if words.out else Path(f"{rig.name}-{protocol.name}.h5")
     report = Path(words.report) if words.report else None
     if report is not None and report.exists():
         raise CommandError(f"{report} is there already; choose another name with --report")
-    clock: Clock = HostClock() if words.pace == "real" or not rig.simulated else VirtualClock()
     if not words.quiet:
-        show_cautions(rig)
+        show_cautions(powered, words.port or rig.name)
     with RunProgress(forecast(rig, protocol).duration_s, quiet=words.quiet) as progress:
-        outcome, result = run_session(
-            rig,
-            protocol,
-            out,
-            clock,
-            pace=words.pace,
-            progress=progress,
-            operator=progress,
-            acknowledged_by=words.acknowledge or "",
-            keep_journal=words.keep_journal,
-        )
+        if in_process:
+            outcome, result = run_session(
+                rig,
+                protocol,
+                out,
+                VirtualClock(),
+                pace="fast",
+                progress=progress,
+                operator=progress,
+                acknowledged_by=words.acknowledge or "",
+                keep_journal=words.keep_journal,
+            )
+        else:
+            outcome, result = run_on_bench(_job(words, rig, protocol, out), progress)
     print(summary(result))
     if report is not None:
         with opened(out) as file:
             report_session(file, rig, result, report)
     print(f"\nsession: {out}" + (f", report: {report}" if report is not None else ""))
+    return told(outcome)
+
+
+def told(outcome: RunOutcome) -> Exit:
     if outcome.exit_code:
         raise CommandError(outcome.reason, Exit(outcome.exit_code))
     return Exit.DONE
 
 
-def show_cautions(rig: RigDescription) -> None:
+def _job(words: argparse.Namespace, rig: RigDescription, protocol: Protocol, out: Path) -> Job:
+    return Job(
+        rig_text=rig.text,
+        rig_name=str(words.rig),
+        protocol_text=protocol.text,
+        protocol_name=str(words.protocol),
+        out=str(out.absolute()),
+        port=words.port or "",
+        seed=words.seed,
+        acknowledged_by=words.acknowledge or "",
+        created_utc=utc_text(),
+        created_utc_s=utc_s(),
+        software=software(),
+        keep_journal=words.keep_journal,
+    )
+
+
+def show_cautions(powered: bool, where: str) -> None:
     """The cautions before every run; a simulated one is told from a powered one."""
     from rig.run.cautions import CAUTIONS
 
     print("Cautions for a powered bench:", file=sys.stderr)
     for caution in CAUTIONS:
         print(f"  - {caution}", file=sys.stderr)
-    if rig.simulated:
-        print(f"This run is simulated ({rig.name}): nothing is powered.", file=sys.stderr)
+    if not powered:
+        print(f"This run is simulated ({where}): nothing is powered.", file=sys.stderr)

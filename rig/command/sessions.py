@@ -5,10 +5,9 @@ from __future__ import annotations
 import hashlib
 import sys
 from collections.abc import Callable, Sequence
-from dataclasses import asdict, replace
+from dataclasses import replace
 from importlib.metadata import version
 from pathlib import Path
-from typing import Any
 
 from drivers.clock import Clock
 from drivers.errors import BenchError
@@ -22,6 +21,7 @@ from rig.record.errors import Damaged, JournalFailure, NameTaken
 from rig.record.journal import JournalWriter
 from rig.record.sealing import seal
 from rig.results import SessionResult
+from rig.run.header import run_header
 from rig.run.loop import Loop, Operator, Progress, RunOutcome
 from rig.session import Session, open_session
 from rig.steps import Protocol
@@ -88,22 +88,15 @@ def run_session(
         hello = bench.open()
     except BenchError as error:
         raise CommandError(str(error), Exit.HARDWARE) from None
-    header: dict[str, Any] = {
-        "created_utc": utc_text(),
-        "software": software(),
-        "tick_hz": hello.tick_hz,
-        "row_period_ticks": hello.row_period_ticks,
-        "frame_rows": hello.frame_rows,
-        "channels": [asdict(channel) for channel in hello.channels],
-        "bench": {"name": hello.name, "firmware": hello.firmware},
-        "rig_text": rig.text,
-        "protocol_text": protocol.text,
-        "calibrations": {},
-        "context": dict(rig.context),
-        "pace": pace,
-        "seed": rig.world.seed if rig.world is not None else None,
-        "acknowledged_by": acknowledged_by,
-    }
+    header = run_header(
+        rig,
+        protocol,
+        hello,
+        created_utc=utc_text(),
+        software=software(),
+        pace=pace,
+        acknowledged_by=acknowledged_by,
+    )
     try:
         journal = JournalWriter(journal_beside(out), header, reserve_bytes=rig.limits.disk_reserve_bytes)
     except (NameTaken, JournalFailure) as error:
@@ -151,6 +144,8 @@ def opened(path: str | Path) -> Session:
 def session_rig(session: Session) -> RigDescription:
     """The rig of a session, with the seed it ran with."""
     rig = session.rig
+    if session.header.get("driver") == "board":  # its file may describe a simulated rig: a stand-in's
+        rig = replace(rig, driver="board", port=str(session.header.get("port", "")))
     seed = session.header.get("seed")
     return with_seed(rig, int(seed) if seed is not None else None)
 

@@ -27,7 +27,7 @@ from rig.files.world import read_world
 from rig.problem import FileProblems, Problem
 
 #: "none": a rig described for analysis only, its constants may be unknown.
-DRIVERS = ("simulated", "none")
+DRIVERS = ("simulated", "board", "none")
 NEEDED = ("body angle", "crank angle", "motor current", "motor voltage")
 CONTEXT = (
     "operator",
@@ -85,6 +85,7 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
     frame_rows = bench.integer("frame_rows", 20, 1, 250)
     tapper, releaser = bench.flag("tapper", True), bench.flag("releaser", True)
     sync_line = bench.flag("sync_line", True)
+    port, baud = _port(bench, driver)
     bench.finish()
 
     channels = read_channels(part("channel"))
@@ -150,9 +151,20 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
         tapper=tapper,
         releaser=releaser,
         sync_line=sync_line,
+        port=port,
+        baud=baud,
         sha256=hashlib.sha256(text.encode()).hexdigest(),
         text=text,
     )
+
+
+def _port(bench: Table, driver: str | None) -> tuple[str, int]:
+    """Where the board is."""
+    port = bench.text("port") if "port" in bench else ""
+    baud = bench.integer("baud", 1_000_000, 1200, 12_000_000)
+    if driver == "board" and not port:
+        bench.wrong("port", None, 'the port of the board, for example "/dev/ttyACM0" (it is missing)')
+    return port, baud
 
 
 def _stops(table: Table) -> StopDescription:

@@ -7,7 +7,11 @@ from dataclasses import dataclass
 
 @dataclass(frozen=True)
 class OperatorInput:
-    """One of: "halt" the run, "acknowledge" a prompt, or "redo" the last tap, leaving it out."""
+    """What was pressed, or what its silence means.
+
+    "halt" the run as the rig file says for the operator, "stop" it with a ramp down, "acknowledge" a prompt,
+    or "redo" the last tap, leaving it out. `reason` is recorded with what follows from it.
+    """
 
     kind: str
     reason: str = ""

@@ -21,6 +21,7 @@ from rig.description import RigDescription
 from rig.events import Event
 from rig.record.errors import JournalFailure
 from rig.run import commands as cm
+from rig.run.clockline import ClockPairs
 from rig.run.inputs import OperatorInput
 from rig.run.interlocks import Interlocks, Trip
 from rig.run.interrupt import HaltSignals
@@ -92,6 +93,7 @@ class Loop:
         *,
         winding: WindingModel | None = None,
         by: str = "",
+        rows_seen: Callable[[RowBlock], None] | None = None,
     ) -> None:
         self._bench = bench
         self._hello = hello
@@ -101,6 +103,8 @@ class Loop:
         self._clock = clock
         self._progress = progress
         self._operator = operator
+        self._clocks = ClockPairs(hello.tick_hz)
+        self._rows_seen = rows_seen  # e.g. a ring for a window; called with every block, after the heartbeat
         if winding is None and rig.motor is not None and rig.simulated and rig.world is not None:
             # The history of a simulated motor is known: its file says at what temperature it begins.
             winding = WindingModel(rig.motor, rig.limits.winding_deg_c, rig.world.winding_start_deg_c)
@@ -144,6 +148,7 @@ class Loop:
             now_s = self._clock.now_s()
             if reading.blocks:
                 fresh_s = now_s
+                self._clocks.add(now_s, int(reading.blocks[-1].tick[-1]))
                 self._take(reading)
             else:
                 self._without_rows(now_s - fresh_s, reading.notices)
@@ -162,6 +167,8 @@ class Loop:
                 # Also after a trip, once it has been dealt with: a ramp down needs a board that stays on.
                 self._bench.heartbeat()
             self._record(frame, block)
+            if self._rows_seen is not None:
+                self._rows_seen(block)
             events = [Event(notice.tick, "notice", _told(notice)) for notice in notices]
             for event in events:
                 self._journal.event(event)
@@ -258,6 +265,12 @@ class Loop:
     # -- ends ------------------------------------------------------------------------------------------
 
     def _finish(self, code: int, reason: str) -> None:
+        # In process there is one clock only.
+        line = self._clocks.line() if self._hello.capabilities.hardware else None
+        if line is not None:
+            self._event(
+                Event(self._tick, "clock", {name: round(value, 6) for name, value in vars(line).items()})
+            )
         self._event(Event(self._tick, "finished", {"exit_code": code, "reason": reason}))
         self._journal.flush()
         self._outcome = RunOutcome(code, reason, tuple(self._trips))

@@ -90,8 +90,9 @@ class Runner:
             return []
         if trips and self.state != TURNING:
             return self._trip(tick, trips)
-        if any(one.kind == "halt" for one in operator) and self.state in (READY, RUNNING, STOPPING):
-            return self._halt(tick)
+        ends = [one for one in operator if one.kind in ("halt", "stop")]
+        if ends and self.state in (READY, RUNNING, STOPPING):
+            return self._halt(tick, ends)
         made: list[cm.Command] = []
         if self.state == READY:
             self.state = RUNNING
@@ -117,15 +118,16 @@ class Runner:
         self._stop_from = tick
         return [self._halt_drive(Halt.RAMP, "end of the protocol")]
 
-    def _halt(self, tick: int) -> list[cm.Command]:
+    def _halt(self, tick: int, ends: Sequence[OperatorInput]) -> list[cm.Command]:
         if self._exit[0] == DONE:
-            self._exit = (HALTED, "halted by the operator")
-        how = self.rig.halts.get("operator", Halt.COAST)
+            self._exit = (HALTED, ends[0].reason or "halted by the operator")
+        pressed = any(one.kind == "halt" for one in ends)
+        how = self.rig.halts.get("operator", Halt.COAST) if pressed else Halt.RAMP
         self.state = STOPPING
         if not self._harder(how):
             return []
         self._stop_from = tick
-        return [self._halt_drive(how, "operator")]
+        return [self._halt_drive(how, ends[0].reason or "operator")]
 
     def _trip(self, tick: int, trips: Sequence[Trip]) -> list[cm.Command]:
         made = self._note_trips(trips)

@@ -1,0 +1,53 @@
+"""The control pipe as the bench process sees it: an operator whose silence is heard.
+
+from the client    {"here": 1}                          a sign of life, several times a second
+                   {"input": KIND, "reason": "..."}     see rig.run.inputs
+to the client      {"ready": {...}}, {"standing": {...}}, {"verdict": {...}}, {"event": {...}},
+                   {"prompt": "..."}, {"done": {...}}, {"failed": {...}}
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from drivers.clock import Clock
+from rig.bench.lines import LineReader, LineWriter
+from rig.run.inputs import OperatorInput
+
+#: A client that gives no sign of life for so long may be frozen, and its halt control with it.
+SILENT_S = 1.0
+
+
+class Control:
+    """The operator at the far end of the pipe. The end of the pipe is a halt, silence a ramp down."""
+
+    def __init__(self, descriptor_in: int, descriptor_out: int, clock: Clock) -> None:
+        self._clock = clock
+        self._heard_s = clock.now_s()
+        self.reader = LineReader(descriptor_in, self._hear)
+        self.writer = LineWriter(descriptor_out)
+        self._told_gone = self._told_silent = False
+
+    def _hear(self) -> None:
+        self._heard_s = self._clock.now_s()
+
+    def inputs(self) -> Sequence[OperatorInput]:
+        made = []
+        for line in self.reader.take():
+            kind = line.get("input")
+            if isinstance(kind, str):
+                made.append(OperatorInput(kind, str(line.get("reason", ""))))
+        if self.reader.ended and not self._told_gone:
+            self._told_gone = True
+            made.append(OperatorInput("halt", "the program that ran this bench has gone; drive off"))
+        silent_s = self._clock.now_s() - self._heard_s
+        if silent_s > SILENT_S and not self._told_silent and not self._told_gone:
+            self._told_silent = True
+            words = (
+                f"the program that runs this bench has been silent for {silent_s:.1f} s; drive ramped down"
+            )
+            made.append(OperatorInput("stop", words))
+        return made
+
+    def prompt(self, text: str) -> None:
+        self.writer.send({"prompt": text})
