@@ -27,6 +27,8 @@ ANSWER_S = 0.12
 TRIES = 3
 #: Frames out of order in a row that mean a board counting from zero again.
 RESTARTED_FRAMES = 3
+#: Commands that may go to a board whatever has happened to it.
+OFF = (ms.Code.HALT, ms.Code.CLOSE)
 WAYS = {Halt.COAST: 0, Halt.BRAKE: 1, Halt.RAMP: 2}
 
 
@@ -44,10 +46,10 @@ class BoardBench(Bench):
         self._placed = FrameSequence()
         self._frames: list[RowFrame] = []
         self._blocks: list[RowBlock] = []
-        self._notices: list[Notice] = []
+        self._notices: list[ms.BoardNotice] = []
         self._answers: dict[int, ms.Answer] = {}
         self._number = 0
-        self._tick = 0  # of the newest row placed, unwrapped
+        self._tick: int | None = None  # of the newest row placed, unwrapped
         self._read_tick: int | None = None  # of the newest row handed to the owner
         self._disorder = 0
         self._rejected = 0  # frames with good check sums that this bench cannot have sent
@@ -73,33 +75,33 @@ class BoardBench(Bench):
 
     def _introduce(self) -> Hello:
         self._unwrapper.forget()
+        self._rejected = self._told_damaged = 0
         self._hello = self._coding = None
         self._forget_rows()
+        self._number = self._number + 1 & 0xFFFF
         end_s = self._clock.now_s() + self._boot_s
         self._need().write(b"\0")  # ends whatever half a message an earlier host left behind
-        while self._hello is None:
+        while self._hello is None or not self._blocks or self._restarted:  # ticks need a row for their place
             now_s = self._clock.now_s()
             if now_s > end_s:
+                if self._hello is not None:
+                    raise LinkTimeout("the board introduced itself but sends no rows")
                 raise LinkTimeout(
                     f"no board answered within {self._boot_s:g} s; check port, baud rate and power"
                 )
+            if self._restarted:  # it had answered before the opening of its port reset it
+                self._hello = self._coding = None
+                self._forget_rows()
             self._send(ms.AskHello())
-            while self._hello is None and self._clock.now_s() < now_s + ASK_AGAIN_S:
+            while not (self._blocks or self._restarted) and self._clock.now_s() < now_s + ASK_AGAIN_S:
                 self._listen(ASK_AGAIN_S)
-        # What came before the hello was another conversation's tail, or a boot loader's.
-        self._unwrapper.damaged = self._rejected = self._told_damaged = 0
-        self._number = self._number + 1 & 0xFFFF
-        while not self._blocks:  # a first row, so that ticks of answers can be placed among the rows
-            if self._clock.now_s() > end_s:
-                raise LinkTimeout("the board introduced itself but sends no rows")
-            self._listen(ASK_AGAIN_S)
         return self._hello
 
     def _forget_rows(self) -> None:
         self._placed = FrameSequence()
         self._frames, self._blocks, self._notices = [], [], []
         self._answers.clear()
-        self._tick, self._read_tick = 0, None
+        self._tick = self._read_tick = None
         self._disorder = 0
         self._restarted = ""
 
@@ -111,26 +113,30 @@ class BoardBench(Bench):
         self._drop()
 
     def _drop(self) -> None:
-        if self._wire is not None:
-            self._wire.close()
-        self._wire = None
+        wire, self._wire = self._wire, None
+        if wire is not None:
+            wire.close()
 
     # Data
 
     def read(self, max_wait_s: float) -> Reading:
+        """HardwareFault once the board has restarted, after all that came before."""
         wire = self._need()
-        if not self._blocks:
+        if self._blocks or self._notices:
+            data = b""
+            with suppress(LinkError):  # the next read, with nothing else to hand over, meets it again
+                data = wire.read(0.0)
+            self._take(data)
+        elif not self._restarted:
             self._listen(max_wait_s)
-        else:
-            self._take(wire.read(0.0))
-        if self._restarted:
+        if self._restarted and not (self._blocks or self._notices):
             raise HardwareFault(self._restarted)
+        notices = [Notice(self._unwrapped(one.tick), one.kind, one.data) for one in self._notices]
         if self.damaged > self._told_damaged:
-            self._notices.append(
-                Notice(self._tick, "damaged_bytes", {"stretches": self.damaged - self._told_damaged})
-            )
+            stretches = self.damaged - self._told_damaged
+            notices.append(Notice(self._tick or 0, "damaged_bytes", {"stretches": stretches}))
             self._told_damaged = self.damaged
-        reading = Reading(self._frames, self._blocks, self._notices)
+        reading = Reading(self._frames, self._blocks, notices)
         if self._blocks:
             self._read_tick = int(self._blocks[-1].tick[-1])
         self._frames, self._blocks, self._notices = [], [], []
@@ -201,11 +207,14 @@ class BoardBench(Bench):
         self._need()
         self._number = self._number + 1 & 0xFFFF
         number = self._number
+        self._answers.clear()  # late ones and second ones
         try:
             asked = wrap(ms.pack(ms.Command(number, code, arguments)))
         except OverflowError:
             raise BenchRefused(f"{max(arguments, key=abs):g} is beyond what can be told to a board") from None
         for _ in range(TRIES):
+            if self._restarted and code not in OFF:
+                raise HardwareFault(self._restarted)  # nothing may arm a board that has forgotten all
             self._need().write(asked)
             end_s = self._clock.now_s() + ANSWER_S
             while number not in self._answers:
@@ -213,10 +222,8 @@ class BoardBench(Bench):
                 if left_s <= 0.0:
                     break
                 self._listen(left_s)
-            if number in self._answers:
-                answer = self._answers[number]
-                self._answers.clear()
-                return answer
+            else:
+                return self._answers[number]
         raise LinkTimeout(f"the board did not answer {code.name.lower().replace('_', ' ')} in time")
 
     # Listening
@@ -235,24 +242,16 @@ class BoardBench(Bench):
     def _hear(self, message: ms.Message) -> None:
         match message:
             case ms.HelloText(version, text):
-                if version != ms.VERSION:
-                    raise LinkError(
-                        f"the board speaks version {version} of the link, this program version {ms.VERSION}"
-                    )
                 if self._hello is None:
-                    try:
-                        self._hello, widths = read_hello(text)
-                    except LinkDamage as error:
-                        raise LinkError(str(error)) from None
-                    self._coding = RowCoding(widths)
+                    self._know(version, text)
             case ms.Rows(payload):
                 if self._coding is not None:
                     self._place(self._coding.unpack(payload))
             case ms.Answer():
                 self._answers[message.number] = message
-            case ms.BoardNotice(tick, kind, data):
+            case ms.BoardNotice():
                 if self._hello is not None:
-                    self._notices.append(Notice(self._unwrapped(tick), kind, data))
+                    self._notices.append(message)  # its tick has a place once there is a row
             case ms.Boot(cause):
                 if self._hello is not None:
                     why = cause.name.lower().replace("_", "-")
@@ -262,11 +261,29 @@ class BoardBench(Bench):
             case _:
                 raise LinkDamage("a message for boards came from one")
 
+    def _know(self, version: int, text: bytes) -> None:
+        if version != ms.VERSION:
+            raise LinkError(
+                f"the board speaks version {version} of the link, this program version {ms.VERSION}"
+            )
+        try:
+            self._hello, widths = read_hello(text)
+        except LinkDamage as error:
+            raise LinkError(str(error)) from None
+        self._coding = RowCoding(widths)
+        # What came before was another conversation's tail, or a boot loader's.
+        self._unwrapper.damaged = self._rejected = 0
+
     def _place(self, frame: RowFrame) -> None:
         hello = self._hello
         if hello is None or frame.period != hello.row_period_ticks or len(frame.raw) > hello.frame_rows:
             raise LinkDamage("a row frame that differs from the board's hello")
+        if self._restarted:
+            return  # counted from another beginning, they have no place
         try:
+            # A board that counts from zero again may be ahead in frames by chance, but its clock is behind.
+            if self._tick is not None and not 0 < (frame.tick - self._tick) & 0xFFFFFFFF < 2**31:
+                raise FrameDamaged(f"row frame {frame.sequence} is older than the one before it")
             block = self._placed.place(frame)
         except FrameDamaged:
             self._disorder += 1
@@ -282,5 +299,7 @@ class BoardBench(Bench):
 
     def _unwrapped(self, tick: int) -> int:
         """The tick nearest to the newest row whose low 32 bits are `tick`."""
+        if self._tick is None:
+            return tick
         ahead = (tick - self._tick) & 0xFFFFFFFF
         return max(self._tick + (ahead - 2**32 if ahead >= 2**31 else ahead), 0)

@@ -5,11 +5,14 @@ An address is what pyserial opens: a device ("/dev/ttyACM0", "COM3") or "socket:
 
 from __future__ import annotations
 
+import errno
 import os
 import select
+import socket
 from contextlib import suppress
 from dataclasses import dataclass
 from typing import Protocol
+from urllib.parse import urlsplit
 
 import serial
 from serial.tools import list_ports
@@ -58,6 +61,9 @@ class SerialWire:
 
     def __init__(self, address: str, baud: int) -> None:
         self._address = address
+        tcp = address.startswith("socket://")
+        if tcp and not _complete(address):
+            raise LinkError(f"{address} cannot be opened: expected socket://HOST:PORT")
         settings = {} if "://" in address else {"exclusive": True}
         try:
             self._port = serial.serial_for_url(
@@ -69,6 +75,10 @@ class SerialWire:
             self._descriptor: int | None = self._port.fileno() if os.name == "posix" else None
         except (OSError, AttributeError):
             self._descriptor = None
+        if tcp and self._descriptor is not None:
+            # Else a command right behind a heartbeat waits for the answer to it: measured, 43 ms of 120.
+            with socket.socket(fileno=os.dup(self._descriptor)) as line:
+                line.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
 
     def read(self, max_wait_s: float) -> bytes:
         try:
@@ -104,15 +114,40 @@ def open_wire(address: str, baud: int = 1_000_000) -> SerialWire:
     return SerialWire(address, baud)
 
 
-def _reason(error: Exception) -> str:
-    words = str(error).lower()
-    number = getattr(error, "errno", None)
-    if "lock" in words or number == 16:
-        return "another program has it open"
-    if number == 2 or "no such file" in words:
-        return "there is no such port"
-    if number == 13 or "permission" in words:
-        return "permission denied; the user must belong to the group that owns serial ports"
-    if "refused" in words:
-        return "nobody listens there"
-    return words.split("\n")[0]
+NO_PORT, IN_USE, NO_TTY = "there is no such port", "another program has it open", "it is no serial port"
+NOT_PERMITTED = "permission denied; the user must belong to the group that owns serial ports"
+#: Error numbers of the operating system -> what they mean for a port.
+REASONS = {
+    errno.ENOENT: NO_PORT,
+    errno.EAGAIN: IN_USE,  # it holds the lock
+    errno.EBUSY: IN_USE,
+    errno.EACCES: NOT_PERMITTED,
+    errno.EPERM: NOT_PERMITTED,
+    errno.ENOTTY: NO_TTY,
+    errno.EISDIR: NO_TTY,
+    errno.ECONNREFUSED: "nobody listens there",
+    socket.EAI_NONAME: "there is no such host",
+}
+#: On Windows pyserial tells the system's error in words only, and an open port as one not permitted.
+WORDS = {"FileNotFoundError": NO_PORT, "PermissionError": IN_USE}
+
+
+def _reason(error: BaseException) -> str:
+    """In words of ours where the cause is known; an address may hold any word, so numbers are asked first."""
+    cause: BaseException | None = error
+    while cause is not None:  # pyserial puts an error of its own, without a number, around the system's
+        number = getattr(cause, "errno", None) or (cause.args[0] if cause.args else None)
+        if number in REASONS:
+            return REASONS[number]
+        cause = cause.__cause__ or cause.__context__
+    words = str(error)
+    return next((reason for word, reason in WORDS.items() if word in words), words.split("\n")[0])
+
+
+def _complete(address: str) -> bool:
+    """Whether a TCP address names a host and a port."""
+    try:
+        parts = urlsplit(address)
+        return bool(parts.hostname) and parts.port is not None
+    except ValueError:  # a port that is no number, or beyond 65535
+        return False

@@ -13,14 +13,16 @@ in four thousand million pass.
 
 from __future__ import annotations
 
-import zlib
-from binascii import crc_hqx
+import struct
+from binascii import crc32, crc_hqx
 
 from cobs import cobs
 
-#: No message is longer on the wire; what is longer is noise.
+#: No message is longer on the wire, its zero not counted; what is longer is noise.
 LONGEST = 1 << 16
-CHECK_BYTES = 4
+CHECK = struct.Struct(">I")
+#: A message of so many bytes fits whatever they are.
+LONGEST_MESSAGE = LONGEST - (LONGEST // 254 + 1) - CHECK.size
 
 
 class LinkDamage(ValueError):
@@ -28,12 +30,15 @@ class LinkDamage(ValueError):
 
 
 def check_of(message: bytes) -> bytes:
-    return crc_hqx(message, 0xFFFF).to_bytes(2, "big") + (zlib.crc32(message) & 0xFFFF).to_bytes(2, "big")
+    return CHECK.pack(crc_hqx(message, 0xFFFF) << 16 | crc32(message) & 0xFFFF)
 
 
 def wrap(message: bytes) -> bytes:
-    """A message as it goes on the wire."""
-    return cobs.encode(message + check_of(message)) + b"\0"
+    """A message as it goes on the wire. ValueError for one that no reader would take: empty or too long."""
+    stuffed = cobs.encode(message + check_of(message))
+    if not message or len(stuffed) > LONGEST:
+        raise ValueError(f"a message of {len(message)} bytes, expected 1 to {LONGEST_MESSAGE}")
+    return stuffed + b"\0"
 
 
 class Unwrapper:
@@ -48,21 +53,23 @@ class Unwrapper:
         """The messages completed by `data`, checked, without their check; damaged ones are counted."""
         pieces = (self._rest + data if self._rest else data).split(b"\0")
         self._rest = pieces.pop()
+        if self._overlong and pieces:  # the end of a stretch whose beginning was thrown away
+            self._overlong = False
+            del pieces[0]
         messages = []
-        decode = cobs.decode
+        decode, written = cobs.decode, CHECK.unpack_from
         for piece in pieces:
-            if self._overlong:  # the end of a stretch whose beginning was thrown away
-                self._overlong = False
-                continue
             if not piece:
                 continue
             try:
-                checked = decode(piece)
+                checked = decode(piece) if len(piece) <= LONGEST else b""
             except cobs.DecodeError:
-                self.damaged += 1
-                continue
-            message = checked[:-CHECK_BYTES]
-            if message and checked[-CHECK_BYTES:] == check_of(message):
+                checked = b""
+            message = checked[: -CHECK.size]
+            # Written out, not called: this runs for every message there is.
+            if message and written(checked, len(message))[0] == (
+                crc_hqx(message, 0xFFFF) << 16 | crc32(message) & 0xFFFF
+            ):
                 messages.append(message)
             else:
                 self.damaged += 1

@@ -70,6 +70,8 @@ HEARTBEAT = struct.Struct("<BI")
 ANSWER = struct.Struct("<BHBII")
 NOTICE = struct.Struct("<BI")
 TWO_BYTES = struct.Struct("<BB")
+SINGLE = struct.Struct("<f")
+SINGLE_BITS = struct.Struct("<I")
 BOOT = struct.Struct("<BBB")
 
 
@@ -126,6 +128,19 @@ class Boot:
 Message = AskHello | Heartbeat | Command | HelloText | Rows | Answer | BoardNotice | Boot
 
 
+def single(value: float) -> float:
+    """`value` in single precision, rounded towards zero: a board is never told more than was asked for.
+
+    Rounded to the nearest, a board's own highest voltage (12.1 V, say) would be refused by it as too high.
+    OverflowError for what single precision cannot hold.
+    """
+    (told,) = SINGLE.unpack(SINGLE.pack(value))
+    if abs(told) > abs(value):
+        (bits,) = SINGLE_BITS.unpack(SINGLE.pack(told))
+        (told,) = SINGLE.unpack(SINGLE_BITS.pack(bits - 1))  # sign and magnitude: one less is nearer to zero
+    return float(told)
+
+
 def pack(message: Message) -> bytes:
     """A message as bytes, to be wrapped. OverflowError for an argument that single precision cannot hold."""
     match message:
@@ -135,7 +150,8 @@ def pack(message: Message) -> bytes:
             return HEARTBEAT.pack(0x02, tick & 0xFFFFFFFF)
         case Command(number, code, arguments):
             form = ARGUMENTS.get(code, NO_ARGUMENTS)
-            return COMMAND.pack(0x03, number & 0xFFFF, code) + form.pack(*arguments)
+            told = [single(one) if isinstance(one, float) else one for one in arguments]
+            return COMMAND.pack(0x03, number & 0xFFFF, code) + form.pack(*told)
         case HelloText(version, text):
             return TWO_BYTES.pack(0x81, version) + text
         case Rows(payload):
@@ -144,8 +160,8 @@ def pack(message: Message) -> bytes:
             head = ANSWER.pack(0x83, number & 0xFFFF, result, tick & 0xFFFFFFFF, value & 0xFFFFFFFF)
             return head + reason.encode()
         case BoardNotice(tick, kind, data):
-            told = json.dumps({"kind": kind, **data}, separators=(",", ":"))
-            return NOTICE.pack(0x84, tick & 0xFFFFFFFF) + told.encode()
+            fields = json.dumps({**data, "kind": kind}, separators=(",", ":"))
+            return NOTICE.pack(0x84, tick & 0xFFFFFFFF) + fields.encode()
         case Boot(cause, version):
             return BOOT.pack(0x85, version, cause)
 
@@ -181,7 +197,7 @@ def _unpack(message: bytes) -> Message:
             if not isinstance(fields, dict):
                 raise ValueError("a notice is a JSON object")
             kind = fields.pop("kind")
-            if not isinstance(kind, str) or not all(_plain(value) for value in fields.values()):
+            if not isinstance(kind, str) or not all(map(_plain, (kind, *fields, *fields.values()))):
                 raise ValueError("a notice holds texts and numbers")
             return BoardNotice(tick, kind, fields)
         case 0x85:
@@ -195,6 +211,10 @@ def _no_constant(name: str) -> float:
 
 
 def _plain(value: object) -> bool:
+    """Whether a value can be written down anywhere: finite, of 64 bits, without half characters."""
+    if isinstance(value, str):
+        value.encode()  # UnicodeEncodeError, a ValueError, for a lone surrogate
+        return True
     if isinstance(value, float):
         return math.isfinite(value)
-    return isinstance(value, str | int)
+    return isinstance(value, int) and -(2**63) <= value < 2**63

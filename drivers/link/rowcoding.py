@@ -39,6 +39,10 @@ class RowCoding:
         self._form = np.dtype(fields)
         self._plain = all(width == "i32" for width in widths)
 
+    def frame_bytes(self, rows: int) -> int:
+        """Size of a frame of so many rows."""
+        return HEADER.size + rows * self._form.itemsize
+
     def pack(self, frame: RowFrame) -> bytes:
         if self._plain:
             return frame.pack()
@@ -54,7 +58,7 @@ class RowCoding:
         sequence, tick, period, first_row, status, overruns, rows, channels = HEADER.unpack_from(payload)
         if channels != self._channels or rows == 0 or period == 0:
             raise LinkDamage(f"a row frame of {rows} rows, {channels} channels and a period of {period}")
-        if len(payload) != HEADER.size + rows * self._form.itemsize:
+        if len(payload) != self.frame_bytes(rows):
             raise LinkDamage(f"a row frame of {len(payload)} bytes cannot hold {rows} rows")
         samples = np.frombuffer(payload, dtype=self._form, offset=HEADER.size)
         raw = np.empty((rows, channels), dtype=np.int32)
