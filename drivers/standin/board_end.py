@@ -27,7 +27,7 @@ WAYS = (Halt.COAST, Halt.BRAKE, Halt.RAMP)
 FORSAKEN_S = 2.0
 BOOT_S = 0.3
 
-#: Called with what happened, for a log: tick and whatever belongs to it.
+#: Called with what happened, for a log: tick (from the stand-in's beginning) and whatever belongs to it.
 Tell = Callable[[dict[str, Any]], None]
 
 
@@ -68,7 +68,7 @@ class BoardEnd:
         self._last_answer: bytes | None = None
         self._last_number: int | None = None
         self._beat_tick: int | None = None  # the row the newest heartbeat named
-        self._beat_at = 0  # board tick at which it was taken
+        self._beat_at = 0  # tick at which it was taken, not set back by a restart
         self._enabled = False
         self._lose = self._damage = 0
         # What the far end saw, to be compared with what the host says.
@@ -135,7 +135,7 @@ class BoardEnd:
             if self._streaming:
                 self._queue_rows(frame)
         for notice in reading.notices:
-            self._tell({"event": notice.kind, "tick": self._board_tick(notice.tick), **notice.data})
+            self._tell({"event": notice.kind, "tick": notice.tick & 0xFFFFFFFF, **notice.data})
             if self._streaming:
                 self._queue_message(ms.BoardNotice(self._board_tick(notice.tick), notice.kind, notice.data))
 
@@ -208,7 +208,7 @@ class BoardEnd:
         if not (newer and sampled):
             return
         self._beat_tick = tick
-        self._beat_at = self._now_tick()
+        self._beat_at = (self._now_tick() + self._tick_base) & 0xFFFFFFFF
         self.counts["heartbeats"] += 1
         self._bench.heartbeat()
 
@@ -280,7 +280,7 @@ class BoardEnd:
             self._tell(
                 {
                     "event": "on" if enabled else "off",
-                    "tick": self._board_tick(frame.tick),
+                    "tick": frame.tick,
                     "last_heartbeat_tick": self._beat_at,
                 }
             )

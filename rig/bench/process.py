@@ -96,6 +96,8 @@ class Run:
             hello = self.bench.open()
             stack.callback(self.bench.close)
             self.hello: Hello = agreed(self.rig, hello) if self.rig.driver == "board" else hello
+            # Whoever starts a run arms the board anew; it refuses while the cause of a latch is still there.
+            self.bench.clear_latch()
         except AnalysisGone as error:
             raise Failed(HALTED, str(error)) from None
         except BenchError as error:

@@ -92,6 +92,7 @@ class Interlocks:
             winding = WindingModel(rig.motor, rig.limits.winding_deg_c)
         self.winding = winding
         self._latched: set[str] = set()
+        self._unlatched = False  # whether the board has been seen without a latch
         self._origin: int | None = None
         self._last_tick: int | None = None
         self._stalled_from: int | None = None
@@ -135,8 +136,12 @@ class Interlocks:
             load = self._largest(block, column)
             self._limit(trips, "load", "vertical load", load, limits.load_n, "N", tick)
         self._losses(trips, block, tick)
-        if block.status & Status.LATCHED:  # its notice may have been lost on the way
+        if not block.status & Status.LATCHED:
+            self._unlatched = True
+        elif self._unlatched:  # its notice may have been lost on the way
             self._board(trips, _why(block.status), tick)
+        # Rows from before the latch of an earlier run was cleared are none of this run's trips; arming a board
+        # that is still latched is refused there.
         self._last_tick = tick
         return trips
 
