@@ -80,6 +80,17 @@ class Stream:
         return self._read("time_s")
 
     @property
+    def first_tick(self) -> int:
+        """Tick of the first row, 0 without rows; the columns stay unread."""
+        return self._ends[0]
+
+    @property
+    def duration_s(self) -> float:
+        """Board time from the first row to the last, s; the columns stay unread."""
+        first, last = self._ends
+        return (last - first) / self.tick_hz
+
+    @property
     def status(self) -> NDArray[np.uint16]:
         """`drivers.rows.Status` bits, shape (n,)."""
         return self._read("status")
@@ -133,11 +144,19 @@ class Stream:
         return overview.of_rows(self._part(self._group[name], first * size, end * size), size)
 
     @functools.cached_property
+    def _ends(self) -> tuple[int, int]:
+        """The first and the last tick; (0, 0) without rows."""
+        if not len(self):
+            return 0, 0
+        first, last = (int(self._part(self._group["tick"], row, row + 1)[0]) for row in (0, len(self) - 1))
+        return first, last
+
+    @functools.cached_property
     def _clock(self) -> RowClock | None:
         """The rows' times without their column; None where only the column can tell."""
         if not len(self):
             return None
-        first, last = (int(self._part(self._group["tick"], row, row + 1)[0]) for row in (0, len(self) - 1))
+        first, last = self._ends
         lost = [(loss[0], loss[1]) for loss in self.losses if loss[1]]
         try:
             return RowClock(first, last, len(self), self.row_period_ticks, lost)
@@ -230,6 +249,8 @@ class Session:
         if not isinstance(live, list):
             raise ValueError("results/live is not a JSON list")
         self.results: dict[str, Any] = {"live": live, "final": final}
+        #: What worked out the final results: the software of the run, unless they were worked out anew.
+        self.results_software = str(file["results/final"].attrs.get("software", self.software))
         self.events = [
             Event(int(tick), kind.decode(), _object(data, "an event's data"))
             for tick, kind, data in zip(

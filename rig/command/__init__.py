@@ -10,6 +10,7 @@ from importlib import import_module
 from rig.command.exits import CommandError, Exit
 from rig.command.parser import build
 from rig.problem import FileProblems
+from rig.record.errors import Damaged
 
 
 def main(words: Sequence[str] | None = None) -> int:
@@ -21,6 +22,9 @@ def main(words: Sequence[str] | None = None) -> int:
     except CommandError as error:
         _tell(str(error))
         return int(error.code)
+    except Damaged as error:  # inside a column: found only when it is read
+        _tell(str(error))
+        return int(Exit.DAMAGED)
     except FileProblems as error:
         for problem in error.problems:
             _tell(str(problem))

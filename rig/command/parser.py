@@ -16,6 +16,7 @@ COMMANDS = {
     "run": "carry out a protocol on a rig and analyse it while it runs",
     "check": "read a rig file, and a protocol, and tell every mistake; dry run before power",
     "analyse": "estimate everything again from the raw rows of a session",
+    "replay": "a session once more as it ran, and whether it comes to the same",
     "report": "write the report of a session",
     "recover": "seal the journal of a run that was cut off",
     "stand-in": "serve a simulated rig in a board's own bytes on a pseudo-terminal or a TCP port",
@@ -67,6 +68,17 @@ def build() -> argparse.ArgumentParser:
     analyse.add_argument("sessions", metavar="SESSION", nargs="+")
     analyse.add_argument("--json", action="store_true", help="results as JSON on stdout")
     analyse.add_argument("--rig", metavar="RIG", help="constants from this rig file instead of the session's")
+
+    replay = made["replay"]
+    replay.add_argument("session", metavar="SESSION")
+    replay.add_argument(
+        "--speed",
+        type=float,
+        metavar="N",
+        help="times real time, 0.1 or more (default: as fast as it computes)",
+    )
+    replay.add_argument("--json", action="store_true", help="results as JSON on stdout")
+    replay.add_argument("--quiet", action="store_true", help="no progress on stderr")
 
     report = made["report"]
     report.add_argument("session", metavar="SESSION")

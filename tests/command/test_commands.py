@@ -244,6 +244,19 @@ def test_damaged_files_are_told_as_damaged(tmp_path: Path) -> None:
         assert done.stderr.count("\n") == 1
 
 
+def test_damage_inside_a_column_is_told_as_damage(session: Path, tmp_path: Path) -> None:
+    """Found only when the column is read, long after the file was opened."""
+    with h5py.File(session) as file:
+        place = file["streams/board/body"].id.get_chunk_info(1).byte_offset + 200
+    broken = bytearray(session.read_bytes())
+    broken[place] ^= 0x10
+    (tmp_path / "a.h5").write_bytes(broken)
+    for words in (("analyse", "a.h5"), ("report", "a.h5"), ("replay", "a.h5", "--quiet")):
+        done = haltere(*words, cwd=tmp_path)
+        assert done.returncode == 5, done.stderr
+        assert "/streams/board/body cannot be read" in done.stderr and done.stderr.count("\n") == 1
+
+
 def test_check_tells_every_mistake_and_the_forecast(tmp_path: Path) -> None:
     good = haltere("check", "boom", "first-sweep")
     assert good.returncode == 0
