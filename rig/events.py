@@ -28,7 +28,8 @@ turning         -                          drive is off, the crank still turns
 standstill      coast_s
 loss            rows, frames, overruns
 notice          anything the board told
-clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s    board clock against host clock
+clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s   board clock against host clock;
+                longest_away_s, longest_gap_s   not reading; between two readings with rows
 finished        exit_code, reason
 """
 

@@ -23,7 +23,7 @@ from rig.bench.books import JournalledAnalysis, ToldJournal
 from rig.bench.control import Control
 from rig.bench.job import Job
 from rig.bench.remote_analysis import AnalysisGone, RemoteAnalysis
-
+from rig.bench.ring import RingFailure, RingWriter
 from rig.bench_source import bench_for
 from rig.description import RigDescription
 from rig.problem import FileProblems
@@ -117,10 +117,10 @@ class Run:
         except RecordError as error:
             raise Failed(USAGE, str(error)) from None
         stack.callback(self._leave_journal)
-        self.ring = None
-        if job.ring:
-            self.ring = _ring(Path(job.ring), self.hello)
+        self.ring = _ring(Path(job.ring), self.hello) if job.ring else None
+        if self.ring is not None:
             stack.callback(self.ring.close)
+        self._turns = 0
         self.analysis.follow(job.journal, job.seed)
         self.loop: Loop | None = None
         self._kept = JournalledAnalysis(self.analysis, self.journal, control.writer)
@@ -132,7 +132,7 @@ class Run:
             {
                 "ready": {
                     "journal": str(self._job.journal),
-                    "ring": self._job.ring,
+                    "ring": self._job.ring if self.ring is not None else "",
                     "bench": self.hello.name,
                     "firmware": self.hello.firmware,
                     "analysis_pid": self.analysis.pid,
@@ -156,6 +156,8 @@ class Run:
         # Everything loaded so far stays: collecting it again and again would hold up the loop for tens of ms.
         gc.collect()
         gc.freeze()
+        # The threads of journal and pipes give way to the loop within a millisecond.
+        sys.setswitchinterval(1e-3)
         return self.loop.run()
 
     def conclude(self) -> dict[str, Any]:
@@ -176,8 +178,15 @@ class Run:
         return result
 
     def _show(self, block: RowBlock) -> None:
+        self._turns += 1
         if self.ring is not None:
             self.ring.add(block)
+            self.ring.tell(
+                committed_bytes=self.journal.committed,
+                committed_sequence=self.journal.committed_sequence,
+                heartbeat_tick=int(block.tick[-1]),
+                turns=self._turns,
+            )
 
     def _report(self, time_s: float, standing: Standing, verdicts: Sequence[Verdict]) -> None:
         if time_s < self._next_report_s or self.loop is None:
@@ -203,11 +212,15 @@ class Run:
             print(f"haltere: {error}", file=sys.stderr)
 
 
-def _ring(path: Path, hello: Hello):
-    from rig.bench.ring import RingWriter
+def _ring(path: Path, hello: Hello) -> RingWriter | None:
+    """The ring for a window. A run can do without: what fails here is told and no more."""
     row_hz = hello.tick_hz / hello.row_period_ticks
     names = [channel.name for channel in hello.channels]
-    return RingWriter(path, names, hello.tick_hz, max(1, round(row_hz / BINS_PER_S)), RING_BINS)
+    try:
+        return RingWriter(path, names, hello.tick_hz, max(1, round(row_hz / BINS_PER_S)), RING_BINS)
+    except RingFailure as failure:
+        print(f"haltere: no live traces: {failure}", file=sys.stderr)
+        return None
 
 
 def one_run(job: Job, control: Control, clock: Clock) -> dict[str, Any]:

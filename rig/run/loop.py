@@ -104,6 +104,8 @@ class Loop:
         self._progress = progress
         self._operator = operator
         self._clocks = ClockPairs(hello.tick_hz)
+        self._away_s = 0.0  # longest time in which the line was not being read
+        self._gap_s = 0.0  # longest time between two readings that brought rows
         self._rows_seen = rows_seen  # e.g. a ring for a window; called with every block, after the heartbeat
         if winding is None and rig.motor is not None and rig.simulated and rig.world is not None:
             # The history of a simulated motor is known: its file says at what temperature it begins.
@@ -142,11 +144,13 @@ class Loop:
             raise
 
     def _go_on(self) -> RunOutcome:
-        fresh_s = self._clock.now_s()
+        fresh_s = back_s = self._clock.now_s()
         while self._outcome is None:
+            self._away_s = max(self._away_s, self._clock.now_s() - back_s)
             reading = self._bench.read(self._wait_s)
-            now_s = self._clock.now_s()
+            now_s = back_s = self._clock.now_s()
             if reading.blocks:
+                self._gap_s = max(self._gap_s, now_s - fresh_s)
                 fresh_s = now_s
                 self._clocks.add(now_s, int(reading.blocks[-1].tick[-1]))
                 self._take(reading)
@@ -268,9 +272,9 @@ class Loop:
         # In process there is one clock only.
         line = self._clocks.line() if self._hello.capabilities.hardware else None
         if line is not None:
-            self._event(
-                Event(self._tick, "clock", {name: round(value, 6) for name, value in vars(line).items()})
-            )
+            told = {**vars(line), "longest_away_s": self._away_s, "longest_gap_s": self._gap_s}
+            rounded = {name: round(value, 6) for name, value in told.items()}
+            self._event(Event(self._tick, "clock", rounded))
         self._event(Event(self._tick, "finished", {"exit_code": code, "reason": reason}))
         self._journal.flush()
         self._outcome = RunOutcome(code, reason, tuple(self._trips))

@@ -1,4 +1,4 @@
-"""Hundreds of interruptions at random moments: prints, and keeps, how many of each kept the motor safe and the rows whole.
+"""Hundreds of interruptions at random moments: how many of each kept the motor safe and the rows whole.
 
 .venv/bin/python tests/benchmarks/interruptions.py [HARD KILLS OF EACH] [OTHERS OF EACH] [SEED]
 """
