@@ -34,6 +34,9 @@ class Job:
     software: str = ""
     keep_journal: bool = False
     ring: str = ""  # where to put the ring for a window; "": none
+    state_folder: str = (
+        ""  # where a motor's temperature outlives the program; "": nowhere, it is then taken as hot
+    )
 
     @property
     def session(self) -> Path:

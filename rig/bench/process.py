@@ -22,6 +22,7 @@ from drivers.rows import RowBlock
 from rig.bench.books import JournalledAnalysis, ToldJournal
 from rig.bench.control import Control
 from rig.bench.job import Job
+from rig.bench.motor_memory import MotorMemory
 from rig.bench.remote_analysis import AnalysisGone, RemoteAnalysis
 from rig.bench.ring import RingFailure, RingWriter
 from rig.bench_source import bench_for
@@ -122,6 +123,8 @@ class Run:
             stack.callback(self.ring.close)
         self._turns = 0
         self.analysis.follow(job.journal, job.seed)
+        self._began_s = clock.now_s()
+        self._motor = MotorMemory(self.rig, job.state_folder, job.created_utc_s)
         self.loop: Loop | None = None
         self._kept = JournalledAnalysis(self.analysis, self.journal, control.writer)
 
@@ -150,6 +153,7 @@ class Run:
             self._clock,
             self._report,
             Watch(self._control, self.analysis),
+            winding=self._motor.winding,
             by=self._job.acknowledged_by,
             rows_seen=self._show,
         )
@@ -158,7 +162,9 @@ class Run:
         gc.freeze()
         # The threads of journal and pipes give way to the loop within a millisecond.
         sys.setswitchinterval(1e-3)
-        return self.loop.run()
+        outcome = self.loop.run()
+        self._motor.keep(self._clock.now_s() - self._began_s)
+        return outcome
 
     def conclude(self) -> dict[str, Any]:
         """Results of the whole journal; a fresh analysis does it if the one of the run has died."""

@@ -13,6 +13,7 @@ from rig.command.exits import CommandError, Exit
 from rig.command.moment import utc_s, utc_text
 from rig.command.progress import RunProgress
 from rig.command.sessions import opened, report_session, run_session, software, with_seed
+from rig.command.state_folder import state_folder
 from rig.command.table import summary
 from rig.description import RigDescription
 from rig.files import read_pair
@@ -78,6 +79,7 @@ def _job(words: argparse.Namespace, rig: RigDescription, protocol: Protocol, out
         created_utc_s=utc_s(),
         software=software(),
         keep_journal=words.keep_journal,
+        state_folder=state_folder(),
     )
 
 
