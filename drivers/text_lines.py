@@ -72,7 +72,9 @@ class TextSampler:
     @property
     def limits(self) -> tuple[str, ...]:
         """What its rows are not good for, each a short phrase."""
-        timing = f"timed by its own ticks of {self.tick_hz:g} Hz" if self.tick_column is not None else ARRIVAL
+        timing = (
+            f"timed by its own ticks of {self.tick_hz:.12g} Hz" if self.tick_column is not None else ARRIVAL
+        )
         return (LIMITS[0], timing, *LIMITS[1:])
 
 

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 
 from analysis.mechanism.parameters import Mechanism
 from drivers.contract import Halt
+from drivers.text_lines import TextSampler
 
 
 @dataclass(frozen=True)
@@ -145,6 +146,7 @@ class RigDescription:
     sync_line: bool = True
     port: str = ""  # of a board: a device, or socket://HOST:PORT
     baud: int = 1_000_000
+    samplers: tuple[TextSampler, ...] = ()  # beside the board; never for interlocks or decay
     sha256: str = ""  # of the file text
     text: str = ""  # the file as read
 

@@ -33,8 +33,11 @@ def read_channels(table: Table) -> tuple[ChannelDescription, ...]:
         channel = _channel(name, one)
         if channel is None:
             continue
-        if name in NAMES_TAKEN or not name.replace("_", "").isalnum():
-            one.wrong("", name, "a channel name of letters, digits and _, not tick, time_s or status")
+        if name in NAMES_TAKEN or not name.isidentifier():  # which a session file asks for
+            words = (
+                "a channel name of letters, digits and _, beginning with a letter, not tick, time_s or status"
+            )
+            one.wrong("", name, words)
         if channel.measures in seen:
             one.wrong(
                 "measures", channel.measures, f"one channel for it; {seen[channel.measures]} measures it"

@@ -1,7 +1,7 @@
 """Rig files: from TOML text to a `RigDescription`, with every mistake at once.
 
 haltere_rig = 1
-[rig] [bench] [channel.NAME] [limits] [halts] [motor] [stops] [mechanism] [simulation] [context]
+[rig] [bench] [channel.NAME] [sampler.NAME] [limits] [halts] [motor] [stops] [mechanism] [simulation] [context]
 """
 
 from __future__ import annotations
@@ -22,6 +22,7 @@ from rig.files.channels import read_channels
 from rig.files.constants import CARRIAGES, CONSTANTS, REQUIRED, REQUIRED_FOR
 from rig.files.limits import read_halts, read_limits
 from rig.files.lines import Document, parse, read_text
+from rig.files.samplers import read_samplers
 from rig.files.table import Table
 from rig.files.world import read_world
 from rig.problem import FileProblems, Problem
@@ -128,6 +129,7 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
         described = read_world(simulation)
         world = described if driver == "simulated" else None
     context = _context(root.table("context"))
+    samplers = read_samplers(root.table("sampler"), port)
     root.finish()
     if problems:
         return None
@@ -153,6 +155,7 @@ def _rig(document: Document, text: str, problems: list[Problem]) -> RigDescripti
         sync_line=sync_line,
         port=port,
         baud=baud,
+        samplers=samplers,
         sha256=hashlib.sha256(text.encode()).hexdigest(),
         text=text,
     )

@@ -263,6 +263,6 @@ def test_a_real_port() -> None:
 
 def test_limits_are_told() -> None:
     plain = TextSampler("strain", "COM3", STRAIN.columns)
-    for sampler, words in ((plain, "arrival at the host"), (STRAIN, "its own ticks of 1e+06 Hz")):
+    for sampler, words in ((plain, "arrival at the host"), (STRAIN, "its own ticks of 1000000 Hz")):
         told = "; ".join(sampler.limits)
         assert words in told and "check sum" in told and "never used by interlocks" in told

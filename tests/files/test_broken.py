@@ -129,6 +129,7 @@ RIG = [
     Broken("bits = 16", "bits = 64", "channel.load.bits", "from 8 to 24"),
     Broken('noise = "20 mN"', 'noise = "20 mV"', "channel.load.noise", "a force"),
     Broken("[channel.load]", "[channel.tick]", "channel.tick", "a channel name"),
+    Broken("[channel.load]", "[channel.5v]", "channel.5v", "beginning with a letter"),
     Broken('body_mass = "72 g"', 'body_mass = "72 kN"', "mechanism.body_mass", "a mass"),
     Broken('body_mass = "72 g"', 'body_mass = "0 g"', "mechanism.body_mass", "above zero"),
     Broken(
@@ -237,6 +238,65 @@ STEP = [
     Broken('for = "2 s"', 'for = "-2 s"', "step.6.for", "above 0"),
 ]
 
+#: What describes a second device that prints text lines, at the end of a rig file.
+SAMPLED = """
+[sampler.strain]
+port = "/dev/ttyUSB1"
+baud = 57600
+delimiter = "comma"
+tick_rate = "1 MHz"
+[sampler.strain.column.clock]
+measures = "tick"
+[sampler.strain.column.force]
+measures = "vertical load"
+per_count = "1 mN"
+zero = "0.2 N"
+polarity = -1
+[sampler.strain.column.arm]
+measures = "body angle"
+counts_per_turn = 4096
+[sampler.strain.column.valve]
+measures = "other"
+per_count = 0.5
+"""
+IN = "sampler.strain"
+SAMPLER = [
+    Broken('port = "/dev/ttyUSB1"\n', "", f"{IN}.port", "it is missing"),
+    Broken('port = "/dev/ttyUSB1"', "port = 1", f"{IN}.port", "a text in quotes"),
+    Broken('port = "/dev/ttyUSB1"', 'port = " "', f"{IN}.port", "the port of the device"),
+    Broken("baud = 57600", "baud = 57.6", f"{IN}.baud", "a whole number from 300"),
+    Broken(
+        'delimiter = "comma"', 'delimiter = ","', f"{IN}.delimiter", "one of comma, semicolon, tab, space"
+    ),
+    Broken('delimiter = "comma"', 'delimiter = "coma"', f"{IN}.delimiter", "did you mean comma"),
+    Broken('delimiter = "comma"\n', "", f"{IN}.delimiter", "it is missing"),
+    Broken('tick_rate = "1 MHz"', 'tick_rate = "1 M"', f"{IN}.tick_rate", "a frequency in Hz"),
+    Broken('tick_rate = "1 MHz"', 'tick_rate = "0 Hz"', f"{IN}.tick_rate", "from 1 to 1e+09"),
+    Broken('tick_rate = "1 MHz"\n', "", f"{IN}.tick_rate", "it is missing"),
+    Broken('measures = "tick"', 'measures = "other"', f"{IN}.tick_rate", 'measures = "tick" beside it'),
+    Broken(
+        'measures = "other"\nper_count = 0.5',
+        'measures = "tick"',
+        f"{IN}.column.valve.measures",
+        "one already",
+    ),
+    Broken('measures = "tick"', 'measures = "tick"\nzero = 1', f"{IN}.column.clock.zero", "a known key"),
+    Broken(
+        'measures = "vertical load"', 'measures = "load"', f"{IN}.column.force.measures", "one of body angle"
+    ),
+    Broken('per_count = "1 mN"', 'per_count = "1 mV"', f"{IN}.column.force.per_count", "a force"),
+    Broken('per_count = "1 mN"', 'per_count = "0 mN"', f"{IN}.column.force.per_count", "above 0"),
+    Broken('per_count = "1 mN"\n', "", f"{IN}.column.force.per_count", "it is missing"),
+    Broken("per_count = 0.5", 'per_count = "0.5 V"', f"{IN}.column.valve.per_count", "a plain number"),
+    Broken("polarity = -1", "polarity = 0", f"{IN}.column.force.polarity", "1 or -1"),
+    Broken("counts_per_turn = 4096", "counts_per_turn = 0", f"{IN}.column.arm.counts_per_turn", "from 1 to"),
+    Broken("counts_per_turn = 4096\n", "", f"{IN}.column.arm.per_count", "it is missing"),
+    Broken("column.valve]", "column.tick]", f"{IN}.column.tick", "a column name"),
+    Broken("column.valve]", 'column."2nd valve"]', f"{IN}.column.2nd valve", "a column name"),
+    Broken("polarity = -1", 'unit = "N"', f"{IN}.column.force.unit", "a known key"),
+    Broken("baud = 57600", "bauds = 57600", f"{IN}.bauds", "did you mean baud"),
+]
+
 
 def broken(text: str, edit: Broken) -> str:
     assert edit.old in text, edit.old
@@ -261,6 +321,16 @@ def told(problems: tuple[Problem, ...], edit: Broken, text: str, name: str) -> N
 )
 def test_broken_rig(edit: Broken) -> None:
     text = broken(BOOM, edit)
+    with pytest.raises(FileProblems) as caught:
+        rig_from_text(text, "rig.toml")
+    told(caught.value.problems, edit, text, "rig.toml")
+
+
+@pytest.mark.parametrize(
+    "edit", SAMPLER, ids=lambda edit: re.sub(r"\s+", " ", edit.new)[:40] or f"no {edit.old[:30]!r}"
+)
+def test_broken_sampler(edit: Broken) -> None:
+    text = BOOM + broken(SAMPLED, edit)
     with pytest.raises(FileProblems) as caught:
         rig_from_text(text, "rig.toml")
     told(caught.value.problems, edit, text, "rig.toml")
