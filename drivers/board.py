@@ -25,6 +25,8 @@ BOOT_S = 6.0
 ASK_AGAIN_S = 0.25
 ANSWER_S = 0.12
 TRIES = 3
+#: A board stops sending rows to a host it has not heard for 2 s; one that only reads speaks up in time.
+SPEAK_UP_S = 1.0
 #: Frames out of order in a row that mean a board counting from zero again.
 RESTARTED_FRAMES = 3
 #: Commands that may go to a board whatever has happened to it.
@@ -49,6 +51,7 @@ class BoardBench(Bench):
         self._notices: list[ms.BoardNotice] = []
         self._answers: dict[int, ms.Answer] = {}
         self._number = 0
+        self._spoken_s = 0.0  # when something was last sent
         self._tick: int | None = None  # of the newest row placed, unwrapped
         self._read_tick: int | None = None  # of the newest row handed to the owner
         self._disorder = 0
@@ -80,7 +83,7 @@ class BoardBench(Bench):
         self._forget_rows()
         self._number = self._number + 1 & 0xFFFF
         end_s = self._clock.now_s() + self._boot_s
-        self._need().write(b"\0")  # ends whatever half a message an earlier host left behind
+        self._write(b"\0")  # ends whatever half a message an earlier host left behind
         while self._hello is None or not self._blocks or self._restarted:  # ticks need a row for their place
             now_s = self._clock.now_s()
             if now_s > end_s:
@@ -122,6 +125,8 @@ class BoardBench(Bench):
     def read(self, max_wait_s: float) -> Reading:
         """HardwareFault once the board has restarted, after all that came before."""
         wire = self._need()
+        if self._clock.now_s() - self._spoken_s > SPEAK_UP_S:
+            self._send(ms.AskHello())  # feeds no watchdog, as a heartbeat would
         if self._blocks or self._notices:
             data = b""
             with suppress(LinkError):  # the next read, with nothing else to hand over, meets it again
@@ -192,7 +197,11 @@ class BoardBench(Bench):
             raise BenchMisuse(f"the bench has no {words}")
 
     def _send(self, message: ms.Message) -> None:
-        self._need().write(wrap(ms.pack(message)))
+        self._write(wrap(ms.pack(message)))
+
+    def _write(self, data: bytes) -> None:
+        self._need().write(data)
+        self._spoken_s = self._clock.now_s()
 
     def _command(self, code: ms.Code, *arguments: float) -> tuple[int, int]:
         """Tick of effect, unwrapped, and the value of the answer."""
@@ -205,6 +214,8 @@ class BoardBench(Bench):
 
     def _ask(self, code: ms.Code, *arguments: float) -> ms.Answer:
         self._need()
+        if self._restarted and code not in OFF:
+            raise HardwareFault(self._restarted)  # nothing may arm a board that has forgotten all
         self._number = self._number + 1 & 0xFFFF
         number = self._number
         self._answers.clear()  # late ones and second ones
@@ -213,11 +224,11 @@ class BoardBench(Bench):
         except OverflowError:
             raise BenchRefused(f"{max(arguments, key=abs):g} is beyond what can be told to a board") from None
         for _ in range(TRIES):
-            if self._restarted and code not in OFF:
-                raise HardwareFault(self._restarted)  # nothing may arm a board that has forgotten all
-            self._need().write(asked)
+            self._write(asked)
             end_s = self._clock.now_s() + ANSWER_S
             while number not in self._answers:
+                if self._restarted and code not in OFF:
+                    raise HardwareFault(self._restarted)
                 left_s = end_s - self._clock.now_s()
                 if left_s <= 0.0:
                     break
