@@ -4,7 +4,7 @@ Byte by byte (little-endian):
 
     magic    8 bytes   b"HLTRJNL\\x01"        the last byte is the format version
     records, one after the other:
-      type      u8     1 header, 2 row frame, 3 event, 4 result, 5 losses, 6 end
+      type      u8     1 header, 2 row frame, 3 event, 4 result, 5 losses, 6 end, 7 samples
       length    u32    of the payload
       sequence  u32    0, 1, 2, ... without a gap
       payload   `length` bytes
@@ -13,6 +13,9 @@ Byte by byte (little-endian):
 The first record is the header: JSON with rig, protocol and calibration texts, the channel table, tick rate,
 software versions and the date. A row frame's payload is the frame as the bench sent it (`drivers.rows`).
 Losses precede the frame they were found before: {"rows", "frames", "overruns"}. Events and results are JSON.
+Samples are rows of a sampler of text lines that arrived together (`rig.record.samples`): JSON {"sampler": its name,
+"arrival_tick": the board tick estimated at arrival, "rows": [[numbers as they stood there], ...], "damaged": lines
+that were none, "ticks": [of the device, one a row], only if it sends any}; the header describes their columns.
 The end record closes a complete journal; one without it is an orphan, to be sealed by `haltere recover`.
 
 Reading stops at the first byte that is not as it must be: nothing after a damage is believed, so no wrong row
@@ -35,6 +38,7 @@ from drivers.rows import RowFrame
 from rig.events import Event
 from rig.record.durability import Disk, OsDisk, WriteBehind, free_bytes, lock, sync_folder
 from rig.record.errors import Damaged, JournalFailure, NameTaken
+from rig.record.samples import Samples
 
 MAGIC = b"HLTRJNL\x01"
 HEAD = struct.Struct("<BII")
@@ -42,7 +46,7 @@ CRC = struct.Struct("<I")
 LONGEST = 64 * 2**20  # no record is longer; a length beyond is damage
 READ_BYTES = 1 << 20  # read at once
 
-HEADER, FRAME, EVENT, RESULT, LOSSES, END = 1, 2, 3, 4, 5, 6
+HEADER, FRAME, EVENT, RESULT, LOSSES, END, SAMPLES = 1, 2, 3, 4, 5, 6, 7
 AT_ONCE = (EVENT, RESULT)  # rare, and somebody waits for them: written without waiting for more
 
 
@@ -146,6 +150,9 @@ class JournalWriter:
     def result(self, fields: dict[str, Any]) -> None:
         self._append(RESULT, to_json(fields))
 
+    def samples(self, samples: Samples) -> None:
+        self._append(SAMPLES, to_json(samples.to_json()))
+
     def flush(self) -> None:
         """Wait until everything handed in so far is with the operating system."""
         if not self._behind.wait():
@@ -191,8 +198,11 @@ class Record:
     end: int  # offset of the byte after it
 
     def fields(self) -> dict[str, Any]:
-        """The payload of a JSON record."""
-        found = json.loads(self.payload)
+        """The payload of a JSON record; ValueError if it is no JSON object."""
+        try:
+            found = json.loads(self.payload)
+        except RecursionError:
+            raise ValueError("nested too deep") from None
         if not isinstance(found, dict):
             raise ValueError("not a JSON object")
         return found
@@ -229,7 +239,7 @@ class RecordStream:
         if self.damage or self.ended or self.left < HEAD.size:
             return None
         kind, length, sequence = HEAD.unpack_from(data, start)
-        if sequence != self._sequence or not HEADER <= kind <= END or length > LONGEST:
+        if sequence != self._sequence or not HEADER <= kind <= SAMPLES or length > LONGEST:
             self.damage = f"damaged record head at byte {self.offset}"
             return None
         size = HEAD.size + length + CRC.size
