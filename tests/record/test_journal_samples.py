@@ -75,5 +75,5 @@ def test_other_fields_are_no_samples(changes: dict[str, Any]) -> None:
 @pytest.mark.parametrize("payload", [b"[1]", b"{", b"\xff", b'{"a": ' + b"9" * 5000 + b"}", b"[" * 10**5])
 def test_payloads_that_are_no_fields(payload: bytes) -> None:
     """A right check sum does not make sense of nonsense: always ValueError, for readers to catch one thing."""
-    with pytest.raises(ValueError, match="."):
+    with pytest.raises(ValueError, match=r"object|Expecting|decode|limit|deep"):
         jn.Record(jn.SAMPLES, 1, payload, 100).fields()
