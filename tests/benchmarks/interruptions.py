@@ -6,6 +6,7 @@
 from __future__ import annotations
 
 import json
+import os
 import random
 import sys
 import tempfile
@@ -47,18 +48,24 @@ def main() -> None:
     hard, soft, seed = (int(word) for word in (sys.argv[1:] + ["100", "10", "1"][len(sys.argv) - 1 :]))
     results: dict[str, dict[str, object]] = {}
     began = time.monotonic()
-    with tempfile.TemporaryDirectory() as folder, ThreadPoolExecutor(WORKERS) as pool:
+    with tempfile.TemporaryDirectory() as folder:
+        os.environ["XDG_STATE_HOME"] = folder
+        _all(Path(folder), hard, soft, seed, results)
+    told = {"seed": seed, "minutes": round((time.monotonic() - began) / 60.0, 1), "interruptions": results}
+    Path(__file__).with_suffix(".json").write_text(json.dumps(told, indent=1) + "\n", encoding="utf-8")
+
+
+def _all(folder: Path, hard: int, soft: int, seed: int, results: dict[str, dict[str, object]]) -> None:
+    with ThreadPoolExecutor(WORKERS) as pool:
         jobs = {
             name: pool.submit(
-                series, name, hard if name.startswith("kill") else soft, seed, Path(folder) / str(index)
+                series, name, hard if name.startswith("kill") else soft, seed, folder / str(index)
             )
             for index, name in enumerate(INTERRUPTIONS)
         }
         for name, job in jobs.items():
             results[name] = job.result()
             print(f"{name:25s} {json.dumps(results[name])}", flush=True)
-    told = {"seed": seed, "minutes": round((time.monotonic() - began) / 60.0, 1), "interruptions": results}
-    Path(__file__).with_suffix(".json").write_text(json.dumps(told, indent=1) + "\n", encoding="utf-8")
 
 
 if __name__ == "__main__":
