@@ -72,13 +72,15 @@ class SerialWire:
         except (serial.SerialException, OSError, ValueError) as error:
             raise LinkError(f"{address} cannot be opened: {_reason(error)}") from None
         try:
-            self._descriptor: int | None = self._port.fileno() if os.name == "posix" else None
+            # Elsewhere only sockets can be waited on.
+            self._descriptor: int | None = self._port.fileno() if tcp or os.name == "posix" else None
         except (OSError, AttributeError):
             self._descriptor = None
         if tcp and self._descriptor is not None:
             # Else a command right behind a heartbeat waits for the answer to it: measured, 43 ms of 120.
-            with socket.socket(fileno=os.dup(self._descriptor)) as line:
-                line.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+            line = socket.socket(fileno=self._descriptor)
+            line.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+            line.detach()
 
     def read(self, max_wait_s: float) -> bytes:
         try:
@@ -102,8 +104,11 @@ class SerialWire:
             raise self._gone(error) from None
 
     def close(self) -> None:
+        line = getattr(self._port, "_socket", None)
         with suppress(serial.SerialException, OSError):
             self._port.close()
+        if line is not None:
+            line.close()  # pyserial leaves one open whose peer has reset it
 
     def _gone(self, error: Exception) -> LinkError:
         return LinkError(f"the line to the bench is down ({self._address}): unplugged, or the board has gone")
