@@ -26,6 +26,9 @@ trip            cause, sentence, value, limit, halt
 halt            how, cause
 turning         -                          drive is off, the crank still turns
 standstill      coast_s
+waiting         -                          after a trip or a halt: for the operator to go on or to end
+rearmed         by                         the operator goes on
+refused         reason                     the board does not let itself be armed
 loss            rows, frames, overruns
 notice          anything the board told
 clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s   board clock against host clock;
@@ -36,7 +39,31 @@ finished        exit_code, reason
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from types import UnionType
 from typing import Any
+
+#: All kinds of the table above.
+KINDS = frozenset(
+    (
+        "run", "armed", "drive", "level", "settled", "quiet", "quiet_end", "tap", "tap_end", "tap_excluded",
+        "observe", "observe_end", "level_end", "release", "release_end", "mark", "sync", "zero", "prompt",
+        "acknowledged", "trip", "halt", "turning", "standstill", "loss", "notice", "clock", "finished",
+    )
+)  # fmt: skip
+
+#: What the analysis reads of an event; where None is allowed it may be absent too.
+READ: dict[str, dict[str, type | UnionType]] = {
+    "drive": {"target_v": int | float},
+    "level": {"level": int, "direction": str, "drive_v": int | float},
+    "tap": {"tap": int | None, "impulse_n_m_s": int | float | None},
+    "release": {"tap": int | None, "impulse_n_m_s": int | float | None},
+    "tap_end": {"writes": int | None},
+    "release_end": {"writes": int | None},
+    "quiet_end": {"writes": int | None},
+    "observe_end": {"writes": int | None},
+    "tap_excluded": {"tap": int, "reason": str},
+    "zero": {"load_n": int | float | None, "load_std_n": int | float | None},
+}
 
 
 @dataclass(frozen=True)
@@ -55,3 +82,12 @@ class Event:
         """Inverse of `to_json`; KeyError when tick or kind is missing."""
         rest = {key: value for key, value in fields.items() if key not in ("tick", "kind")}
         return cls(int(fields["tick"]), str(fields["kind"]), rest)
+
+
+def unreadable(event: Event) -> str:
+    """Why the analysis could not go by an event, "" if it can."""
+    for name, kind in READ.get(event.kind, {}).items():
+        value = event.data.get(name)
+        if not isinstance(value, kind):
+            return f"the event '{event.kind}' at tick {event.tick} has {value!r} as {name}"
+    return ""

@@ -24,12 +24,13 @@ class Control:
     def __init__(self, descriptor_in: int, descriptor_out: int, clock: Clock) -> None:
         self._clock = clock
         self._heard_s = clock.now_s()
+        self._told_gone = self._told_silent = False
         self.reader = LineReader(descriptor_in, self._hear)
         self.writer = LineWriter(descriptor_out)
-        self._told_gone = self._told_silent = False
 
     def _hear(self) -> None:
         self._heard_s = self._clock.now_s()
+        self._told_silent = False
 
     def inputs(self) -> Sequence[OperatorInput]:
         made = []
@@ -40,6 +41,8 @@ class Control:
         if self.reader.ended and not self._told_gone:
             self._told_gone = True
             made.append(OperatorInput("halt", "the program that ran this bench has gone; drive off"))
+        if self.reader.ended:
+            made.append(OperatorInput("end"))  # nobody is there to go on
         silent_s = self._clock.now_s() - self._heard_s
         if silent_s > SILENT_S and not self._told_silent and not self._told_gone:
             self._told_silent = True

@@ -33,6 +33,7 @@ class Job:
     created_utc_s: float = 0.0
     software: str = ""
     keep_journal: bool = False
+    may_go_on: bool = False  # somebody is there who can go on after a trip
     ring: str = ""  # where to put the ring for a window; "": none
     state_folder: str = (
         ""  # where a motor's temperature outlives the program; "": nowhere, it is then taken as hot

@@ -68,6 +68,8 @@ class Watch:
         if trouble:
             self._told = True
             made.append(OperatorInput("stop", f"{trouble}; drive ramped down"))
+        if self._told:
+            made.append(OperatorInput("end"))  # nothing could be judged if the run went on
         return made
 
     def prompt(self, text: str) -> None:
@@ -156,6 +158,7 @@ class Run:
             winding=self._motor.winding,
             by=self._job.acknowledged_by,
             rows_seen=self._show,
+            may_go_on=self._job.may_go_on,
         )
         # Everything loaded so far stays: collecting it again and again would hold up the loop for tens of ms.
         gc.collect()

@@ -27,6 +27,14 @@ class Enable(Command):
 
 
 @dataclass(frozen=True)
+class Rearm(Command):
+    """Clear the board's latch and the interlocks', so that the drive may be switched on again.
+
+    Refused while a cause persists; the event is then `refused` with the reason.
+    """
+
+
+@dataclass(frozen=True)
 class Drive(Command):
     target_v: float = 0.0
     slew_v_per_s: float = 0.0

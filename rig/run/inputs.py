@@ -7,10 +7,16 @@ from dataclasses import dataclass
 
 @dataclass(frozen=True)
 class OperatorInput:
-    """What was pressed, or what its silence means.
+    """What was pressed, or what its silence means; `reason` is recorded with what follows from it.
 
-    "halt" the run as the rig file says for the operator, "stop" it with a ramp down, "acknowledge" a prompt,
-    or "redo" the last tap, leaving it out. `reason` is recorded with what follows from it.
+    halt         the run, as the rig file says for the operator
+    stop         it with a ramp down
+    acknowledge  a prompt
+    redo         the last tap: leave it out and give it again
+    reject       the last tap: leave it out
+    next         level: enough is known of this one
+    go_on        after a trip or a halt, at the level where it happened
+    end          a run that waits to go on
     """
 
     kind: str

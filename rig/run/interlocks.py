@@ -145,6 +145,14 @@ class Interlocks:
         self._last_tick = tick
         return trips
 
+    def rearm(self) -> None:
+        """Forget what has tripped, and losses of before; a limit that is still exceeded trips again."""
+        self._latched.clear()
+        self._unlatched = False
+        self._stalled_from = None
+        self._loss.clear()
+        self._rows = self._lost = 0
+
     def stale(self, age_s: float) -> list[Trip]:
         """No rows for `age_s` of host time."""
         trips: list[Trip] = []

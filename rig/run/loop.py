@@ -15,7 +15,7 @@ from typing import Protocol
 
 from drivers.clock import Clock
 from drivers.contract import Bench, Halt, Hello, Notice, Reading
-from drivers.errors import BenchError
+from drivers.errors import BenchError, BenchRefused
 from drivers.rows import RowBlock, RowFrame
 from rig.description import RigDescription
 from rig.events import Event
@@ -94,6 +94,7 @@ class Loop:
         winding: WindingModel | None = None,
         by: str = "",
         rows_seen: Callable[[RowBlock], None] | None = None,
+        may_go_on: bool = False,
     ) -> None:
         self._bench = bench
         self._hello = hello
@@ -111,7 +112,7 @@ class Loop:
             # The history of a simulated motor is known: its file says at what temperature it begins.
             winding = WindingModel(rig.motor, rig.limits.winding_deg_c, rig.world.winding_start_deg_c)
         self.interlocks = Interlocks(rig, hello.channels, hello.tick_hz, winding)
-        self.runner = Runner(rig, protocol, hello.channels, hello.tick_hz, by)
+        self.runner = Runner(rig, protocol, hello.channels, hello.tick_hz, by, may_go_on=may_go_on)
         # One frame a read: what a frame decides then takes effect before the next one, at every pace.
         self._wait_s = hello.frame_rows * hello.row_period_ticks / hello.tick_hz
         self._tick = 0
@@ -241,6 +242,16 @@ class Loop:
         match command:
             case cm.Enable():
                 tick = bench.enable()
+            case cm.Rearm():
+                try:
+                    bench.clear_latch()
+                except BenchRefused as refusal:
+                    command = cm.Record("refused", {"reason": str(refusal)})
+                    data = dict(command.data)
+                    if self._operator is not None:
+                        self._operator.prompt(str(refusal))
+                else:
+                    self.interlocks.rearm()
             case cm.Drive():
                 tick = bench.drive(command.target_v, command.slew_v_per_s)
             case cm.HaltDrive():

@@ -13,6 +13,7 @@ from rig.description import RigDescription
 from rig.events import Event
 from rig.run import actions as ac
 from rig.run import commands as cm
+from rig.run.going_on import from_the_drive
 from rig.run.inputs import OperatorInput
 from rig.run.knowledge import Knowledge
 from rig.run.zero import ZeroMeans
@@ -68,6 +69,7 @@ class Walker:
         self._strike_from: int | None = None  # of the tap now observed
         self._sign = 1.0
         self._acknowledged = False
+        self._enough = -1  # the level of which the operator knows enough
         self._asked_tick: int | None = None  # an interval ended; its verdict has not come yet
 
     @property
@@ -112,6 +114,10 @@ class Walker:
                 self._acknowledged = True
             elif one.kind == "redo":
                 made.extend(self._redo(one.reason))
+            elif one.kind == "reject":
+                made.extend(self._exclude(one.reason or "rejected by the operator"))
+            elif one.kind == "next" and self._level is not None:
+                self._enough = self._level.level
         # Several actions may end and begin at one tick: an event, then a ramp.
         while not self.done:
             if self._asked_tick is not None:
@@ -124,6 +130,9 @@ class Walker:
                 if isinstance(action, ac.EndLevel) and self._level is not None:
                     made.append(self._note("level_end", level=action.level))
                     self._level = None
+                self._next()
+                continue
+            if self._begun is None and self._is_enough(action):
                 self._next()
                 continue
             if self._begun is None:
@@ -234,12 +243,24 @@ class Walker:
             made.append(cm.TapBody("tap", {**data, "impulse_n_m_s": impulse, "by": action.by}, impulse))
         return made
 
-    def _redo(self, reason: str) -> list[cm.Command]:
-        """Exclude the last tap, and give it again while its level lasts."""
+    def _is_enough(self, action: ac.Action) -> bool:
+        """Whether an action that has not begun is skipped because the operator wants the next level."""
+        here = self._level is not None and self._level.level == self._enough
+        return here and not isinstance(action, ac.GoTo | ac.BeginLevel | ac.EndLevel)
+
+    def _exclude(self, reason: str) -> list[cm.Command]:
+        """Leave the last tap out, once."""
         number = self._taps - 1
         if self._last_tap is None or number == self._excluded:
             return []
         self._excluded = number
+        return [cm.Record("tap_excluded", {"tap": number, "reason": reason})]
+
+    def _redo(self, reason: str) -> list[cm.Command]:
+        """Exclude the last tap, and give it again while its level lasts."""
+        excluded = self._exclude(reason or "the operator asked for it again")
+        if not excluded or self._last_tap is None:
+            return []
         level, again = self._last_tap
         made: list[cm.Command] = []
         action = None if self.done else self._course[self._at]
@@ -252,10 +273,27 @@ class Walker:
             # Once more after what goes on now, or before what has not begun.
             at = self._at if self._begun is None else self._at + 1
             self._course = (*self._course[:at], again, *self._course[at:])
-        made.append(
-            cm.Record("tap_excluded", {"tap": number, "reason": reason or "the operator asked for it again"})
-        )
+        return made + excluded
+
+    # -- after a trip ----------------------------------------------------------------------------------
+
+    def go_back(self) -> list[cm.Command]:
+        """Begin the level that was broken off again, as a new one at the same drive; the drive is off."""
+        made: list[cm.Command] = [cm.UnlockDrive()] if self.locked else []
+        self._course, self._at = from_the_drive(self._course, self._at, self._level)
+        self._begun = self._strike_from = self._asked_tick = None
+        self._level = None
+        self._from_v = 0.0
+        self.enabled = False
         return made
+
+    @property
+    def locked(self) -> bool:
+        """Whether the drive register is frozen for an interval that has not ended."""
+        if self.done or self._begun is None:
+            return False
+        action = self._course[self._at]
+        return isinstance(action, ac.Watch | ac.LetGo) or self._strike_from is not None
 
     # -- ending ----------------------------------------------------------------------------------------
 

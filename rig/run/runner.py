@@ -8,6 +8,9 @@
     stopping   the drive register is down, or enable is off             turning
     turning    the crank has stood still for half a second              finished
     turning    it has not after TURNING_AT_MOST_S                       finished (and says so)
+    turning    as it stands still, after a trip or halt, if `may_go_on`  waiting
+    waiting    the operator ends it                                     finished
+    waiting    the operator goes on and the board lets itself be armed  running
     finished   never
 
 A trip while stopping replaces a gentler halt by its own, never a harder one; after that it is only written down.
@@ -38,6 +41,7 @@ from rig.steps import Protocol
 from rig.verdicts import Verdict
 
 READY, RUNNING, STOPPING, TURNING, FINISHED = "ready", "running", "stopping", "turning", "finished"
+WAITING = "waiting"
 STANDSTILL_S = 0.5
 TURNING_AT_MOST_S = 120.0
 DONE, HALTED = 0, 3
@@ -49,9 +53,18 @@ class Runner:
     """Walks through a protocol on one rig."""
 
     def __init__(
-        self, rig: RigDescription, protocol: Protocol, channels: ChannelTable, tick_hz: int, by: str = ""
+        self,
+        rig: RigDescription,
+        protocol: Protocol,
+        channels: ChannelTable,
+        tick_hz: int,
+        by: str = "",
+        *,
+        may_go_on: bool = False,
     ) -> None:
         self.rig = rig
+        self._by = by
+        self._may_go_on = may_go_on
         self.state = READY
         self.tick_hz = tick_hz
         self._protocol = protocol
@@ -88,7 +101,7 @@ class Runner:
         tick = int(block.tick[-1])
         if self.state == FINISHED:
             return []
-        if trips and self.state != TURNING:
+        if trips and self.state not in (TURNING, WAITING):
             return self._trip(tick, trips)
         ends = [one for one in operator if one.kind in ("halt", "stop")]
         if ends and self.state in (READY, RUNNING, STOPPING):
@@ -104,6 +117,8 @@ class Runner:
             return made + self._end(tick)
         if self.state == STOPPING:
             return self._stopping(block, tick, flap_hz, done)
+        if self.state == WAITING:
+            return self._note_trips(trips) + self._waiting(operator, done)
         return self._note_trips(trips) + self._turning(tick, flap_hz)
 
     # -- ends ------------------------------------------------------------------------------------------
@@ -182,17 +197,34 @@ class Runner:
         code, reason = self._exit
         if self._still_from is not None and tick - self._still_from >= STANDSTILL_S * self.tick_hz:
             coast_s = (self._still_from - self._off_tick) / self.tick_hz
-            self.state = FINISHED
-            finished = cm.Finish("finished", {"exit_code": code, "reason": reason}, code, reason)
-            return [cm.Record("standstill", {"coast_s": round(coast_s, 3)}), finished]
+            still = cm.Record("standstill", {"coast_s": round(coast_s, 3)})
+            if self._may_go_on and code != DONE and not self._walker.done:
+                self.state = WAITING
+                return [still, cm.Record("waiting", {})]
+            return [still, self._finish()]
         if waited_s > TURNING_AT_MOST_S:
-            self.state = FINISHED
-            code = code or HALTED
-            reason = (
-                f"{reason}; the crank still turns at {flap_hz:.2f} Hz {math.floor(waited_s)} s after the halt"
-            )
-            return [cm.Finish("finished", {"exit_code": code, "reason": reason}, code, reason)]
+            words = f"the crank still turns at {flap_hz:.2f} Hz {math.floor(waited_s)} s after the halt"
+            self._exit = (code or HALTED, f"{reason}; {words}")
+            return [self._finish()]
+        return []
+
+    def _finish(self) -> cm.Finish:
+        self.state = FINISHED
+        code, reason = self._exit
+        return cm.Finish("finished", {"exit_code": code, "reason": reason}, code, reason)
+
+    def _waiting(self, operator: Sequence[OperatorInput], done: Sequence[Event]) -> list[cm.Command]:
+        kinds = [one.kind for one in operator]
+        if any(event.kind == "rearmed" for event in done):
+            self._exit = (DONE, "done")
+            self._how = self._still_from = None
+            self.state = RUNNING
+            return self._walker.go_back()
+        if "end" in kinds or "halt" in kinds:
+            return [self._finish()]
+        if "go_on" in kinds:
+            return [cm.Rearm("rearmed", {"by": self._by})]
         return []
 
 
-__all__ = ["FINISHED", "READY", "RUNNING", "STOPPING", "TURNING", "OperatorInput", "Runner"]
+__all__ = ["FINISHED", "READY", "RUNNING", "STOPPING", "TURNING", "WAITING", "OperatorInput", "Runner"]

@@ -105,6 +105,7 @@ def go(
     acts: dict[float, OperatorInput] | None = None,
     prepare: Callable[[SimulatedBench], None] | None = None,
     book: Book | None = None,
+    may_go_on: bool = False,
 ) -> Run:
     """Run steps on the simulated boom with scripted verdicts and operator."""
     rig = rig or boom()
@@ -117,5 +118,6 @@ def go(
     person = Person(clock, acts or {})
     book = book or Book()
     protocol = Protocol(name="test", title="", steps=tuple(steps))
-    loop = Loop(bench, hello, rig, protocol, book, Analyst(answer), clock, None, person)
+    analyst = Analyst(answer)
+    loop = Loop(bench, hello, rig, protocol, book, analyst, clock, None, person, may_go_on=may_go_on)
     return Run(loop.run(), book, bench, loop, person)
