@@ -25,8 +25,10 @@ from rig.bench.job import Job
 from rig.bench.motor_memory import MotorMemory
 from rig.bench.remote_analysis import AnalysisGone, RemoteAnalysis
 from rig.bench.ring import RingFailure, RingWriter
+from rig.bench.samplers import Samplers
 from rig.bench_source import bench_for
 from rig.description import RigDescription
+from rig.events import Event
 from rig.problem import FileProblems
 from rig.record.errors import RecordError
 from rig.record.journal import JournalWriter
@@ -101,6 +103,8 @@ class Run:
             self.hello: Hello = agreed(self.rig, hello) if self.rig.driver == "board" else hello
             # Whoever starts a run arms the board anew; it refuses while the cause of a latch is still there.
             self.bench.clear_latch()
+            self.samplers = Samplers(self.rig.samplers, clock, self.hello.tick_hz)
+            stack.callback(self.samplers.close)
         except AnalysisGone as error:
             raise Failed(HALTED, str(error)) from None
         except BenchError as error:
@@ -128,6 +132,7 @@ class Run:
         self._began_s = clock.now_s()
         self._motor = MotorMemory(self.rig, job.state_folder, job.created_utc_s)
         self.loop: Loop | None = None
+        self._told = ToldJournal(self.journal, control.writer)
         self._kept = JournalledAnalysis(self.analysis, self.journal, control.writer)
 
     def carry_out(self) -> RunOutcome:
@@ -150,7 +155,7 @@ class Run:
             self.hello,
             self.rig,
             self.protocol,
-            ToldJournal(self.journal, client),
+            self._told,
             self._kept,
             self._clock,
             self._report,
@@ -196,6 +201,10 @@ class Run:
                 heartbeat_tick=int(block.tick[-1]),
                 turns=self._turns,
             )
+        tick = int(block.tick[-1])
+        for words in self.samplers.write(self.journal, tick):
+            self._told.event(Event(tick, "notice", {"notice": "sampler", "text": words}))
+            self._control.prompt(words)
 
     def _report(self, time_s: float, standing: Standing, verdicts: Sequence[Verdict]) -> None:
         if time_s < self._next_report_s or self.loop is None:
