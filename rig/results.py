@@ -56,6 +56,12 @@ class TapResult:
     amplitude_deg: float | None = None
     status: str = ""
 
+    def to_json(self) -> dict[str, Any]:
+        fields = dict(vars(self))
+        for name in ("decay_per_s", "mode_hz", "stiffness_per_s2"):
+            fields[name] = getattr(self, name).to_json()
+        return fields
+
 
 @dataclass(frozen=True)
 class LevelResult:
@@ -159,12 +165,6 @@ class SessionResult:
     fit_curve: tuple[tuple[float, float, float], ...] = ()
 
     def to_json(self) -> dict[str, Any]:
-        taps = []
-        for tap in self.taps:
-            fields = dict(vars(tap))
-            for name in ("decay_per_s", "mode_hz", "stiffness_per_s2"):
-                fields[name] = getattr(tap, name).to_json()
-            taps.append(fields)
         return {
             "levels": [level.to_json() for level in self.levels],
             "boundary": {"falling": self.falling.to_json(), "rising": self.rising.to_json()},
@@ -175,6 +175,6 @@ class SessionResult:
             "theory": self.theory.to_json(),
             "losses": {"rows": self.lost_rows, "frames": self.lost_frames},
             "excluded": list(self.excluded),
-            "taps": taps,
+            "taps": [tap.to_json() for tap in self.taps],
             "remarks": list(self.remarks),
         }

@@ -1,8 +1,9 @@
 """The analysis process: follows the journal of a run and tells verdicts; `python -m rig.bench.analysis`.
 
-    on standard input    {"journal": PATH, "seed": N}   then {"up_to": BYTES} as the journal grows,
+    on standard input    {"journal": PATH, "seed": N, "pictures": false}   then {"up_to": BYTES} as the journal grows,
                          {"finish": true} when no more rows come
-    on standard output   {"warm": true}, {"verdict": {...}}, {"at": TICK} after each look at the journal,
+    on standard output   {"warm": true}, {"verdict": {...}}, {"picture": {...}} (see rig.evaluation.pictures),
+                         {"at": TICK} after each look at the journal,
                          {"result": {...}} after finish, {"failed": "..."}
 
 It shares nothing with the bench but the journal, so nothing it does, and no way it dies, can delay a heartbeat.
@@ -22,12 +23,16 @@ from rig.bench.lines import LineReader, LineWriter
 from rig.bench.warming import warm_up
 from rig.description import RigDescription
 from rig.evaluation.analyst import Analyst
+from rig.evaluation.pictures import standing_map, tap_picture, theory_picture
 from rig.events import Event
 from rig.files.rig import rig_from_text
 from rig.record import journal as jn
 from rig.record.errors import RecordError
 from rig.record.tail import JournalTail
-from rig.verdicts import Verdict, verdict_to_json
+from rig.verdicts import LevelVerdict, TapVerdict, Verdict, verdict_to_json
+
+#: The theory's curve is drawn up to this share of the rig's highest flap rate.
+THEORY_TOP = 0.75
 
 
 class Follower:
@@ -36,6 +41,7 @@ class Follower:
     def __init__(self, path: Path, seed: int | None = None) -> None:
         self._tail = JournalTail(path)
         self._seed = seed
+        self.pictures: list[dict[str, Any]] | None = None  # a list where a display wants them
         self._analyst: Analyst | None = None
         self._sequence = FrameSequence()
         self.tick = 0
@@ -45,7 +51,19 @@ class Follower:
         told: list[Verdict] = []
         for record in self._tail.poll(up_to):
             told += self._take(record)
+        if self.pictures is not None and self._analyst is not None:
+            self._draw(self._analyst, told, self.pictures)
         return told
+
+    def _draw(self, analyst: Analyst, told: list[Verdict], pictures: list[dict[str, Any]]) -> None:
+        """Pictures of what has become known; they are for the eye, and no result rests on them."""
+        numbers = {verdict.tap for verdict in told if isinstance(verdict, TapVerdict)}
+        for visit in analyst.visits[-2:]:
+            for tap in visit.taps:
+                if tap.result.tap in numbers:
+                    pictures.append({"tap": tap_picture(analyst.store, tap)})
+        if any(isinstance(verdict, LevelVerdict) for verdict in told):
+            pictures.append({"map": standing_map(analyst)})
 
     def finish(self) -> dict[str, Any]:
         """Results of the whole journal, as `haltere analyse --json` tells them."""
@@ -58,7 +76,10 @@ class Follower:
         if record.kind == jn.HEADER:
             header = record.fields()
             channels = ChannelTable(tuple(Channel(**fields) for fields in header["channels"]))
-            self._analyst = Analyst(_rig(header, self._seed), channels, int(header["tick_hz"]))
+            rig = _rig(header, self._seed)
+            self._analyst = Analyst(rig, channels, int(header["tick_hz"]))
+            if self.pictures is not None:
+                self.pictures.append({"theory": theory_picture(rig, THEORY_TOP * rig.limits.flap_hz)})
             return []
         if self._analyst is None:
             return []
@@ -92,11 +113,16 @@ def main() -> None:
             for line in lines:
                 if "journal" in line:
                     follower = Follower(Path(line["journal"]), line.get("seed"))
+                    follower.pictures = [] if line.get("pictures") else None
                 up_to = line.get("up_to", up_to)
                 finish = finish or bool(line.get("finish"))
             if follower is not None:
                 for verdict in follower.look(None if finish else up_to):
                     writer.send({"verdict": verdict_to_json(verdict)})
+                for picture in follower.pictures or ():
+                    writer.send({"picture": picture})
+                if follower.pictures:
+                    follower.pictures.clear()
                 writer.send({"at": follower.tick}, droppable=True)
                 if finish:
                     writer.send({"result": follower.finish()})

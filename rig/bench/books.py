@@ -51,6 +51,8 @@ class JournalledAnalysis:
         verdicts = self._analysis.feed(blocks, events)
         for verdict in verdicts:
             self.keep(verdict)
+        for picture in self._analysis.pictures():
+            self._client.send({"picture": picture})
         return verdicts
 
     def keep(self, verdict: Verdict) -> None:

@@ -33,6 +33,7 @@ class Job:
     created_utc_s: float = 0.0
     software: str = ""
     keep_journal: bool = False
+    pictures: bool = False  # a display wants fits and maps while the run is on
     may_go_on: bool = False  # somebody is there who can go on after a trip
     ring: str = ""  # where to put the ring for a window; "": none
     state_folder: str = (

@@ -128,7 +128,7 @@ class Run:
         if self.ring is not None:
             stack.callback(self.ring.close)
         self._turns = 0
-        self.analysis.follow(job.journal, job.seed)
+        self.analysis.follow(job.journal, job.seed, pictures=job.pictures)
         self._began_s = clock.now_s()
         self._motor = MotorMemory(self.rig, job.state_folder, job.created_utc_s)
         self.loop: Loop | None = None

@@ -43,6 +43,7 @@ class RemoteAnalysis:
         self._failed = ""
         self.at_tick = 0
         self._warm = False
+        self._pictures: list[dict[str, Any]] = []
 
     @property
     def pid(self) -> int:
@@ -61,9 +62,14 @@ class RemoteAnalysis:
             elif self._reader.ended or self._clock.now_s() > end_s:
                 raise AnalysisGone("the analysis process did not start")
 
-    def follow(self, journal: Path, seed: int | None) -> None:
+    def follow(self, journal: Path, seed: int | None, pictures: bool = False) -> None:
         self._heard_s = self._clock.now_s()
-        self._writer.send({"journal": str(journal.absolute()), "seed": seed})
+        self._writer.send({"journal": str(journal.absolute()), "seed": seed, "pictures": pictures})
+
+    def pictures(self) -> list[dict[str, Any]]:
+        """What has come for a display."""
+        come, self._pictures = self._pictures, []
+        return come
 
     def written(self, length: int) -> None:
         """The journal can be read up to here."""
@@ -123,6 +129,8 @@ class RemoteAnalysis:
             return verdict_from_json(line["verdict"])
         if "at" in line:
             self.at_tick = int(line["at"])
+        elif "picture" in line:
+            self._pictures.append(line["picture"])
         elif "warm" in line:
             self._warm = True
         elif "result" in line:

@@ -63,15 +63,17 @@ class Analyst:
         """Results of everything fed so far."""
         self._advance(None)
         self._close_visits()
-        return conclude(
-            Evidence(
-                rig=self.rig,
-                store=self.store,
-                timeline=self.timeline,
-                levels=tuple(self.levels()),
-                pools=self._pools(),
-                fits=self._fits,
-            )
+        return conclude(self.evidence())
+
+    def evidence(self) -> Evidence:
+        """What is known so far, level by level."""
+        return Evidence(
+            rig=self.rig,
+            store=self.store,
+            timeline=self.timeline,
+            levels=tuple(self.levels()),
+            pools=self._pools(),
+            fits=self._fits,
         )
 
     def levels(self) -> list[LevelResult]:

@@ -36,8 +36,8 @@ def conclude(evidence: Evidence) -> SessionResult:
     return SessionResult(
         levels=evidence.levels,
         taps=tuple(taps),
-        falling=_boundary(falling),
-        rising=_boundary(rising),
+        falling=told_boundary(falling),
+        rising=told_boundary(rising),
         vibration=_vibration(evidence, falling),
         passivity=_passivity(evidence),
         friction=_friction(evidence),
@@ -46,11 +46,11 @@ def conclude(evidence: Evidence) -> SessionResult:
         lost_frames=evidence.store.lost_frames,
         excluded=excluded,
         remarks=tuple(_remarks(evidence, falling, points)),
-        fit_curve=_fit_curve(falling, points),
+        fit_curve=fit_curve(falling, points),
     )
 
 
-def _fit_curve(falling: BoundaryEstimate, points: list[LevelPoint]) -> tuple[tuple[float, float, float], ...]:
+def fit_curve(falling: BoundaryEstimate, points: list[LevelPoint]) -> tuple[tuple[float, float, float], ...]:
     """The fitted form for the map: flap rate, stiffness, mean angle in deg, from the boundary up."""
     form = falling.form
     if form is None:
@@ -64,7 +64,7 @@ def _fit_curve(falling: BoundaryEstimate, points: list[LevelPoint]) -> tuple[tup
     return tuple(curve)
 
 
-def _boundary(estimate: BoundaryEstimate) -> Boundary:
+def told_boundary(estimate: BoundaryEstimate) -> Boundary:
     def measured(value: float, std: float, low: float, high: float) -> Measured:
         numbers = [None if not math.isfinite(number) else number for number in (value, std, low, high)]
         return Measured(*numbers)

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from analysis.decay.slow import slow_model
 from analysis.position import turn_means
 from rig.description import RigDescription
 from rig.report import palette
@@ -149,7 +150,7 @@ def tap_figure(shown: ShownTap) -> Figure:
             above.plot(middle, mean, color=palette.INK, linewidth=1.1, label="mean over each wing beat")
         if len(fit.time_s) > 2:
             when = fit.time_s + start - shown.tap_s
-            slow = _slow_model(fit)
+            slow = slow_model(fit)
             above.plot(
                 when, slow * RAD_TO_DEG, color=palette.VERMILLION, linestyle=(0, (4, 2)), linewidth=1.3,
                 label="model, without flap ripple",
@@ -168,30 +169,6 @@ def tap_figure(shown: ShownTap) -> Figure:
         above.set_xlim(time[0], time[-1])
         figure.legend(loc="outside upper right", ncols=4, columnspacing=1.6, handlelength=2.0)
         return figure
-
-
-def _slow_model(fit: DecayFit) -> Values:
-    """Offset, drift and slow mode of a fit, without its crank harmonics, rad."""
-    time = fit.time_s
-    slow = fit.offset_rad + fit.drift_rad_per_s * time
-    squared = fit.omega_squared
-    if squared > 0.0:
-        swing = fit.amplitude_rad * np.cos(np.sqrt(squared) * time + fit.phase_rad)
-    else:
-        # Two real poles: c1 and c2 follow from the angle and the angular rate at the start.
-        rate = np.sqrt(max(-squared, 1e-12))
-        first = _start_angle(fit)
-        swing = (
-            first * np.cosh(rate * time)
-            + (fit.v0_rad_per_s + fit.decay_per_s * first) * np.sinh(rate * time) / rate
-        )
-    return np.asarray(slow + swing * np.exp(-fit.decay_per_s * time), dtype=np.float64)
-
-
-def _start_angle(fit: DecayFit) -> float:
-    # The fit keeps the size of the cosine part only; its sign is that of the model's first stretch.
-    head = fit.model_rad[: max(len(fit.model_rad) // 20, 1)]
-    return fit.amplitude_rad if float(np.mean(head)) >= fit.offset_rad else -fit.amplitude_rad
 
 
 def _mark_interval(axes: Axes, shown: ShownTap, label: str | None = None) -> None:
