@@ -127,7 +127,7 @@ class Run:
         self.ring = _ring(Path(job.ring), self.hello) if job.ring else None
         if self.ring is not None:
             stack.callback(self.ring.close)
-        self._turns = 0
+        self._turns = self._tick = 0
         self.analysis.follow(job.journal, job.seed, pictures=job.pictures)
         self._began_s = clock.now_s()
         self._motor = MotorMemory(self.rig, job.state_folder, job.created_utc_s)
@@ -144,6 +144,7 @@ class Run:
                     "journal": str(self._job.journal),
                     "ring": self._job.ring if self.ring is not None else "",
                     "bench": self.hello.name,
+                    "tick_hz": self.hello.tick_hz,
                     "firmware": self.hello.firmware,
                     "analysis_pid": self.analysis.pid,
                     "channels": [channel.name for channel in self.hello.channels],
@@ -201,7 +202,7 @@ class Run:
                 heartbeat_tick=int(block.tick[-1]),
                 turns=self._turns,
             )
-        tick = int(block.tick[-1])
+        tick = self._tick = int(block.tick[-1])
         for words in self.samplers.write(self.journal, tick):
             self._told.event(Event(tick, "notice", {"notice": "sampler", "text": words}))
             self._control.prompt(words)
@@ -212,6 +213,7 @@ class Run:
         self._next_report_s = time_s + REPORT_S
         told = {
             "time_s": time_s,
+            "tick": self._tick,
             "standing": asdict(standing),
             "run_state": self.loop.runner.state,
             "flap_hz": self.loop.interlocks.flap_hz,
