@@ -70,6 +70,7 @@ DEFAULT_HALTS: Mapping[str, Halt] = {
     "disk": Halt.RAMP,
     "stall": Halt.COAST,
     "board": Halt.COAST,
+    "refused": Halt.COAST,
     "operator": Halt.COAST,
 }
 

@@ -13,6 +13,7 @@ from __future__ import annotations
 
 import os
 import sys
+from contextlib import suppress
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -33,6 +34,8 @@ from rig.verdicts import LevelVerdict, TapVerdict, Verdict, verdict_to_json
 
 #: The theory's curve is drawn up to this share of the rig's highest flap rate.
 THEORY_TOP = 0.75
+
+YIELDING = 5
 
 
 class Follower:
@@ -100,6 +103,8 @@ def _rig(header: dict[str, Any], seed: int | None) -> RigDescription:
 
 
 def main() -> None:
+    with suppress(OSError, AttributeError):
+        os.nice(YIELDING)  # whatever it works out can wait for a heartbeat
     reader, writer = LineReader(sys.stdin.fileno()), LineWriter(sys.stdout.fileno())
     warm_up()
     writer.send({"warm": True})

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import json
+import os
 import signal
 import sys
 import threading
@@ -62,6 +63,8 @@ def main(words: argparse.Namespace) -> Exit:
         for number in (signal.SIGINT, signal.SIGTERM):
             signal.signal(number, lambda *_: ended.set())
         threading.Thread(target=_listen, args=(server,), daemon=True).start()
+        with suppress(OSError, AttributeError):
+            os.setpriority(os.PRIO_PROCESS, 0, -10)  # a board has a processor of its own
         server.serve(lambda: not ended.is_set())
     _tell_counts(board, pace)
     return Exit.DONE

@@ -34,6 +34,7 @@ WHAT_NOW = {
     "loss": "check the link and the load of this computer before arming again",
     "disk": "free some disk space before the next run",
     "stall": "disconnect the supply, find what holds the crank, then arm again",
+    "refused": "find out why at the bench before arming again",
     "board": "find the cause at the bench, then clear the latch and arm again",
 }
 
@@ -170,6 +171,15 @@ class Interlocks:
                 f"{free_bytes / 1e6:.0f} MB of disk are left, less than the reserve of {limit / 1e6:.0f} MB"
             )
             self._trip(trips, "disk", sentence, free_bytes, limit, self._last_tick or 0)
+        return trips
+
+    def refused(self, reason: str) -> list[Trip]:
+        """The board refused a command, and nothing has told why it is not in the state it should be in."""
+        trips: list[Trip] = []
+        if "board" not in self._latched:
+            self._trip(
+                trips, "refused", f"the board refused a command ({reason})", 1.0, 0.0, self._last_tick or 0
+            )
         return trips
 
     def notice(self, notice: Notice) -> list[Trip]:

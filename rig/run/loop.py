@@ -121,6 +121,7 @@ class Loop:
         self._verdicts: list[Verdict] = []
         self._trips: list[Trip] = []
         self._done: list[Event] = []
+        self._refusal = ""  # what the board said of the last command it refused
         self._outcome: RunOutcome | None = None
         self._signals = HaltSignals()
         self._signal_told = False
@@ -184,7 +185,12 @@ class Loop:
             done, self._done = self._done, []
             commands = self.runner.advance(block, self.interlocks.flap_hz, verdicts, trips, operator, done)
             for command in commands:
-                self._carry_out(command)
+                try:
+                    self._carry_out(command)
+                except BenchRefused as refusal:
+                    # Most likely the board has just switched off by itself: the next rows will tell why.
+                    self._refusal = str(refusal)
+                    break
             if self._progress is not None:
                 time_s = (self._tick - self._origin) / self._hello.tick_hz
                 self._progress(time_s, self.runner.standing, verdicts)
@@ -205,6 +211,9 @@ class Loop:
         for notice in notices:
             trips += self.interlocks.notice(notice)
         trips += self.interlocks.check(block)
+        if self._refusal:
+            trips += self.interlocks.refused(self._refusal)
+            self._refusal = ""
         trips += self.interlocks.disk(self._journal.free_bytes)
         self._trips += trips
         return trips

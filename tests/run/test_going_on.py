@@ -136,3 +136,37 @@ def test_where_a_course_goes_on() -> None:
     assert at == 1 and again[2].level == 2 and again[4].level == 2  # type: ignore[attr-defined]
     assert from_the_drive(course, 5, None)[1] == 5
     assert from_the_drive(course, 0, None) == (course, 0)
+
+
+def test_a_latch_that_shows_first_in_a_refusal_is_told_as_what_it_is() -> None:
+    """The board latches between a frame and the command that follows it."""
+
+    def prepare(bench: object) -> None:
+        drive = bench.drive  # type: ignore[attr-defined]
+
+        def latched_first(target_v: float, slew_v_per_s: float) -> int:
+            if target_v == 4.0:
+                bench.faults.open_guard()  # type: ignore[attr-defined]
+            return int(drive(target_v, slew_v_per_s))
+
+        bench.drive = latched_first  # type: ignore[attr-defined]
+
+    run = go([staircase()], answer=held, prepare=prepare)  # type: ignore[arg-type]
+    assert run.outcome.exit_code == 3
+    assert "switched the drive off by itself (guard)" in run.outcome.reason
+    assert [event.data["cause"] for event in run.book.of("trip")] == ["board"]
+    assert run.book.kinds()[-1] == "finished"
+
+
+def test_a_refusal_nobody_explains_is_a_trip_of_its_own() -> None:
+    from drivers.errors import BenchRefused
+
+    def prepare(bench: object) -> None:
+        def refuse(target_v: float, slew_v_per_s: float) -> int:
+            raise BenchRefused("the register is out of order")
+
+        bench.drive = refuse  # type: ignore[attr-defined]
+
+    run = go([staircase()], answer=held, prepare=prepare)  # type: ignore[arg-type]
+    assert run.outcome.exit_code == 3 and "the register is out of order" in run.outcome.reason
+    assert [event.data["cause"] for event in run.book.of("trip")] == ["refused"]
