@@ -261,7 +261,7 @@ class BoardBench(Bench):
             case ms.Answer():
                 self._answers[message.number] = message
             case ms.BoardNotice():
-                if self._hello is not None:
+                if self._hello is not None and not self._restarted:
                     self._notices.append(message)  # its tick has a place once there is a row
             case ms.Boot(cause):
                 if self._hello is not None:

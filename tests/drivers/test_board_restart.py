@@ -27,6 +27,7 @@ def test_a_restart_in_the_middle_of_a_run_is_a_fault(rig: Rig) -> None:
     with pytest.raises(HardwareFault) as fault:
         rig.read(1.0)
     assert str(fault.value) == ("the board has restarted (reset): its drive stays off until it is armed anew")
+    count = len(rig.carried)
     for command in (
         rig.bench.enable,
         lambda: rig.bench.drive(4.0, 8.0),
@@ -35,7 +36,7 @@ def test_a_restart_in_the_middle_of_a_run_is_a_fault(rig: Rig) -> None:
     ):
         with pytest.raises(HardwareFault):
             command()
-    count = len(rig.carried)
+    assert len(rig.carried) == count  # nothing went out
     rig.bench.halt(Halt.COAST)  # whatever has happened
     assert rig.carried[count:] == ["halt"]
     rig.bench.close()

@@ -219,6 +219,21 @@ def test_the_cause_of_a_restart_is_told(board: ScriptedBoard, cause: ms.BootCaus
     bench.close()
 
 
+def test_rows_before_a_restart_are_handed_over_and_those_behind_it_are_not(board: ScriptedBoard) -> None:
+    bench = board.bench
+    bench.open()
+    board.send(bad_line.stream(1, 4))
+    board.say(ms.Boot(ms.BootCause.RESET))
+    board.send(bad_line.stream(10, 14))  # even if they would fit: they are of another beginning
+    board.say(ms.BoardNotice(7, "latch"))
+    reading = bench.read(0.01)
+    assert bad_line.rows_of(list(reading.blocks)).tolist() == list(range(32)) and not reading.notices
+    begun_s = board.clock.now_s()
+    with pytest.raises(HardwareFault, match="reset"):
+        bench.read(10.0)
+    assert board.clock.now_s() == begun_s  # there is nothing to wait for
+
+
 def test_a_command_in_flight_does_not_arm_a_restarted_board(board: ScriptedBoard) -> None:
     """Its answer was lost, the board restarts: asked again, the command would switch the power stage on."""
     bench = board.bench

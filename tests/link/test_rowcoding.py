@@ -73,6 +73,8 @@ def test_frames_of_another_size_are_damage(widths: tuple[str, ...]) -> None:
         head[field] = value
         with pytest.raises(LinkDamage):
             coding.unpack(HEADER.pack(*head) + payload[HEADER.size :])
+    with pytest.raises(LinkDamage):  # no rows, and rightly no samples
+        coding.unpack(HEADER.pack(1, 2, 1000, 4, 5, 6, 0, len(widths)))
     with pytest.raises(LinkDamage):
         RowCoding((*widths, "i16")).unpack(payload)
 
