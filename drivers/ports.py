@@ -97,11 +97,25 @@ class SerialWire:
 
     def write(self, data: bytes) -> None:
         try:
-            self._port.write(data)
+            if self._descriptor is not None and os.name == "posix":
+                self._send(self._descriptor, data)
+            else:
+                self._port.write(data)
         except serial.SerialTimeoutException:
             raise LinkTimeout(f"{self._address} takes no more bytes: the board does not read") from None
         except (serial.SerialException, OSError, ValueError, TypeError) as error:
             raise self._gone(error) from None
+
+    def _send(self, descriptor: int, data: bytes) -> None:
+        """Write until all is taken. Only a line that stays full for WRITE_S is one that does not take it: a program
+        that was kept from running for so long has lost nothing."""
+        os.set_blocking(descriptor, False)
+        rest = memoryview(data)
+        while rest:
+            with suppress(BlockingIOError):
+                rest = rest[os.write(descriptor, rest) :]
+            if rest and not select.select([], [descriptor], [], WRITE_S)[1]:
+                raise serial.SerialTimeoutException("full")
 
     def close(self) -> None:
         line = getattr(self._port, "_socket", None)
