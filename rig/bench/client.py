@@ -59,6 +59,13 @@ class BenchClient:
         """The next message, or None."""
         return self._reader.wait(timeout_s)
 
+    def release(self) -> None:
+        """Close the pipe and wait for nothing: the bench process halts, seals and ends by itself."""
+        self._writer.close(0.2)
+        if self.process.stdin is not None:
+            with suppress(OSError):
+                self.process.stdin.close()
+
     def close(self, patience_s: float = 200.0) -> int:
         """Close the pipe and wait for the end: a run still on is halted, brought to standstill and sealed."""
         self._writer.close(1.0)
