@@ -84,6 +84,14 @@ def test_a_hello_behind_babble_that_does_not_end_is_asked_for_again(board: Scrip
     assert asked(board) == 2  # the first answer was part of the babble
 
 
+def test_half_a_message_of_an_earlier_host_is_ended_first(board: ScriptedBoard) -> None:
+    board.write(wrap(ms.pack(ms.Command(7, ms.Code.DRIVE, (12.0, 1.0))))[:9])
+    bench = board.bench
+    bench.open()
+    assert board.heard == [ms.AskHello()]  # the first is heard already
+    assert board.clock.now_s() < ASK_AGAIN_S
+
+
 def test_an_earlier_conversation_ends_before_the_hello(board: ScriptedBoard) -> None:
     """Rows, notices and answers on their way to the host before this one are not taken for its own."""
     board.send(bad_line.stream(700, 720))
