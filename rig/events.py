@@ -48,6 +48,7 @@ KINDS = frozenset(
         "run", "armed", "drive", "level", "settled", "quiet", "quiet_end", "tap", "tap_end", "tap_excluded",
         "observe", "observe_end", "level_end", "release", "release_end", "mark", "sync", "zero", "prompt",
         "acknowledged", "trip", "halt", "turning", "standstill", "loss", "notice", "clock", "finished",
+        "waiting", "rearmed", "refused",
     )
 )  # fmt: skip
 

@@ -24,7 +24,7 @@ from numpy.typing import NDArray
 
 from drivers.channels import Channel, ChannelTable
 from drivers.rows import RowBlock
-from rig.events import Event
+from rig.events import Event, unreadable
 from rig.record import overview
 from rig.record.errors import Damaged
 from rig.record.inspection import inspect
@@ -85,6 +85,11 @@ class Stream:
         return self._ends[0]
 
     @property
+    def last_tick(self) -> int:
+        """Tick of the last row, 0 without rows; the columns stay unread."""
+        return self._ends[1]
+
+    @property
     def duration_s(self) -> float:
         """Board time from the first row to the last, s; the columns stay unread."""
         first, last = self._ends
@@ -135,7 +140,7 @@ class Stream:
         return self._times_s(np.arange(first_bin, end_bin) * size), values[:, 0], values[:, 1]
 
     def _bins(self, name: str, size: int, first: int, end: int) -> NDArray[np.int32]:
-        place = f"/overview{self._group.name.removeprefix('/streams')}/{name}/{size}"
+        place = f"{self._overview_of(name)}/{size}"
         if size > 1 and place in self._group.file:
             level = self._group.file[place]
             if level.dtype != np.dtype("i4") or level.shape != (overview.bins_of(len(self), size), 2):
@@ -209,6 +214,32 @@ class Stream:
                         lost_frames=frames,
                     )
 
+    def part(self, start_tick: int, end_tick: int) -> RowBlock:
+        """The rows from start_tick up to end_tick as one block, read for themselves; it tells no losses."""
+        first, end = self._row(start_tick), self._row(end_tick)
+        columns = [self._part(self._group[channel.name], first, end) for channel in self.channels]
+        return RowBlock(
+            tick=self._part(self._group["tick"], first, end),
+            raw=np.column_stack(columns).astype(np.int32),
+            status=0,
+        )
+
+    def parts(self, name: str) -> Iterator[NDArray[Any]]:
+        """A column of the file as it stands there, piece by piece; "tick", "time_s", "status" or a channel."""
+        for start in range(0, len(self), READ_ROWS):
+            yield self._part(self._group[name], start, start + READ_ROWS)
+
+    def stored_levels(self, name: str) -> dict[int, NDArray[np.int32]]:
+        """The levels of a channel's overview that stand in the file, {rows per bin: (bins, 2)}."""
+        place = self._overview_of(name)
+        if place not in self._group.file:
+            return {}
+        levels = self._group.file[place]
+        return {int(size): self._part(levels[size], 0, len(levels[size])) for size in levels}
+
+    def _overview_of(self, name: str) -> str:
+        return f"/overview{self._group.name.removeprefix('/streams')}/{name}"
+
     def _read(self, name: str) -> NDArray[Any]:
         if name not in self._cache:
             self._cache[name] = self._part(self._group[name], 0, len(self))
@@ -251,12 +282,15 @@ class Session:
         self.results: dict[str, Any] = {"live": live, "final": final}
         #: What worked out the final results: the software of the run, unless they were worked out anew.
         self.results_software = str(file["results/final"].attrs.get("software", self.software))
-        self.events = [
+        self.events: list[Event] = [
             Event(int(tick), kind.decode(), _object(data, "an event's data"))
             for tick, kind, data in zip(
                 file["events/tick"][:], file["events/kind"][:], file["events/data"][:], strict=True
             )
         ]
+        for event in self.events:
+            if words := unreadable(event):
+                raise ValueError(words)
 
     @property
     def rig(self) -> RigDescription:

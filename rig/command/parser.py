@@ -17,6 +17,7 @@ COMMANDS = {
     "check": "read a rig file, and a protocol, and tell every mistake; dry run before power",
     "analyse": "estimate everything again from the raw rows of a session",
     "replay": "a session once more as it ran, and whether it comes to the same",
+    "verify": "prove that a session is what was recorded, and that its results follow from it",
     "report": "write the report of a session",
     "recover": "seal the journal of a run that was cut off",
     "stand-in": "serve a simulated rig in a board's own bytes on a pseudo-terminal or a TCP port",
@@ -79,6 +80,10 @@ def build() -> argparse.ArgumentParser:
     )
     replay.add_argument("--json", action="store_true", help="results as JSON on stdout")
     replay.add_argument("--quiet", action="store_true", help="no progress on stderr")
+
+    verify = made["verify"]
+    verify.add_argument("session", metavar="SESSION")
+    verify.add_argument("--json", action="store_true", help="the checks as JSON on stdout")
 
     report = made["report"]
     report.add_argument("session", metavar="SESSION")

@@ -15,15 +15,20 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Iterable, Iterator, Mapping
+from pathlib import Path
 from typing import Any
 
 import h5py
 import numpy as np
 from numpy.typing import NDArray
 
+from rig.record.errors import Damaged
+from rig.record.inspection import inspect
+
 PLACE = "/digests"
 TEXT = h5py.string_dtype("utf-8")
 CHUNK_ROWS = 16384
+UNREADABLE = "unreadable"
 #: Values read at a time: a column of an hour does not have to fit into memory.
 READ_ROWS = 1 << 18
 
@@ -106,7 +111,7 @@ def of_dataset(data: h5py.Dataset) -> str:
 def of_file(file: h5py.File) -> dict[str, dict[str, str]]:
     """All digests worked out from what stands in the file, in the form of `/digests`.
 
-    What cannot be read has the digest "unreadable".
+    What cannot be read has the digest UNREADABLE.
     """
     datasets: dict[str, str] = {}
     attributes: dict[str, str] = {}
@@ -116,7 +121,7 @@ def of_file(file: h5py.File) -> dict[str, dict[str, str]]:
             if values := dict(item.attrs):
                 attributes[item.name] = of_attributes(values)
         except (OSError, RuntimeError, ValueError, TypeError, KeyError):
-            attributes[item.name] = "unreadable"
+            attributes[item.name] = UNREADABLE
         if isinstance(item, h5py.Group):
             for name in item:
                 look(item[name])
@@ -124,7 +129,7 @@ def of_file(file: h5py.File) -> dict[str, dict[str, str]]:
             try:
                 datasets[item.name] = of_dataset(item)
             except (OSError, RuntimeError, ValueError, TypeError):
-                datasets[item.name] = "unreadable"
+                datasets[item.name] = UNREADABLE
 
     look(file["/"])
     return {"datasets": datasets, "attributes": attributes}
@@ -144,22 +149,50 @@ def stored(file: h5py.File) -> dict[str, dict[str, str]] | None:
     return told
 
 
-def refresh(file: h5py.File, path: str) -> None:
-    """Bring one dataset's digests up to date after it was replaced on purpose; no other is touched.
+def problems(path: Path) -> list[str] | None:
+    """Everything in a file that is not what its digests say; None if the file holds none.
+
+    Damaged if it cannot even be looked through.
+    """
+    try:
+        with h5py.File(path, "r") as file:
+            inspect(file, path)
+            told = stored(file)
+            found = of_file(file)
+    except ValueError as error:
+        return [str(error)]
+    except (OSError, RuntimeError, KeyError, AttributeError, TypeError, RecursionError):
+        raise Damaged(f"{path} cannot be looked through") from None
+    if told is None:
+        return None
+    wrong = []
+    for kind, words in (("datasets", ""), ("attributes", "the attributes of ")):
+        for name in sorted({*told[kind], *found[kind]}):
+            if name not in found[kind]:
+                wrong.append(f"{words}{name} are missing" if words else f"{name} is missing")
+            elif name not in told[kind]:
+                wrong.append(f"{words}{name} came later" if words else f"{name} came later")
+            elif found[kind][name] == UNREADABLE:
+                wrong.append(f"{words}{name} cannot be read")
+            elif found[kind][name] != told[kind][name]:
+                wrong.append(f"{words}{name} have changed" if words else f"{name} has changed")
+    return wrong
+
+
+def carry_over(old: h5py.File, new: h5py.File, path: str) -> None:
+    """Write the digests of one file to a copy in which the dataset at `path` is another; no other is touched.
 
     Files from before there were digests stay without. ValueError if the digests cannot be read.
     """
-    told = stored(file)
+    told = stored(old)
     if told is None:
         return
-    data = file[path]
+    data = new[path]
     told["datasets"][path] = of_dataset(data)
+    told["attributes"].pop(path, None)
     if values := dict(data.attrs):
         told["attributes"][path] = of_attributes(values)
-    else:
-        told["attributes"].pop(path, None)
-    del file[PLACE]
-    file.create_dataset(PLACE, data=json.dumps(told, indent=0), dtype=TEXT)
+    new.create_dataset(PLACE, data=json.dumps(told, indent=0), dtype=TEXT)
 
 
 def _of_numbers(parts: Iterable[NDArray[Any]]) -> str:

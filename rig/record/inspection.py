@@ -8,14 +8,21 @@ import h5py
 import numpy as np
 
 from rig.record.errors import Damaged
+from rig.record.heaps import damaged_heap
 
 #: A compressed stream is never larger than this many times its file.
 MOST_EXPANSION = 2000
 
 
 def inspect(file: h5py.File, path: Path) -> None:
-    """Damaged for what could lead out of the file or fill the memory, and for columns of the wrong kind."""
+    """Damaged for what could lead out of the file, fill the memory or never end, and for columns of the wrong kind.
+
+    To be called before any text or attribute of the file is read.
+    """
     size = path.stat().st_size
+    place = damaged_heap(path)
+    if place is not None:
+        raise Damaged(f"{path}: the texts kept from byte {place} on are damaged")
     seen: set[int] = set()
 
     def look(group: h5py.Group) -> None:

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from drivers.channels import Channel, ChannelTable
 from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
-from rig.events import Event
+from rig.events import Event, unreadable
 from rig.record import journal as jn
 from rig.record.errors import Damaged
 
@@ -146,8 +146,8 @@ def read_recording(path: Path) -> Recording:
         elif record.kind == jn.EVENT:
             try:
                 event = Event.from_json(record.fields())
-                if not 0 <= event.tick < 2**64:
-                    raise ValueError("no tick")
+                if not 0 <= event.tick < 2**64 or unreadable(event):
+                    raise ValueError("no tick, or no session could be opened with it")
                 recording.events.append(event)
             except (ValueError, KeyError, TypeError, OverflowError):
                 recording.damage = f"an event that is none (record {record.sequence})"

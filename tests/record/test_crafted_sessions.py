@@ -53,12 +53,23 @@ def attribute(place: str, name: str, value: Any) -> Callable[[h5py.File], None]:
     return lambda file: file[place].attrs.__setitem__(name, value)
 
 
+def event(kind: str, data: str) -> Callable[[h5py.File], None]:
+    def act(file: h5py.File) -> None:
+        file["events/kind"][1], file["events/data"][1] = kind, data
+
+    return act
+
+
 CRAFTED: dict[str, tuple[Callable[[h5py.File], Any], str]] = {
     "shared groups": (shared_groups, "two places"),
     "a group that holds itself": (itself, "two places"),
     "no stream of the board": (lambda file: file.pop("streams/board"), "no stream"),
     "an event that is a list": (lambda file: file["events/data"].__setitem__(0, "[1]"), "not a JSON object"),
     "events that are numbers": (put("events/kind", np.arange(6)), "not of its kind"),
+    "a tap without a number": (event("tap_excluded", '{"reason": "x"}'), "has None as tap"),
+    "a level at a drive in words": (
+        event("level", '{"level": 1, "direction": "rising", "drive_v": "much"}'), "has 'much' as drive_v"
+    ),
     "JSON without a bottom": (lambda file: file["events/data"].__setitem__(0, "[" * 10**5), "damaged"),
     "a header that is a list": (put("header", "[]"), "not a JSON object"),
     "results that are a number": (put("results/final", "3"), "not a JSON object"),

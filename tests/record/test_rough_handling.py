@@ -95,6 +95,7 @@ CRAFTED = {
     "event before the beginning": (jn.EVENT, b'{"tick": -1, "kind": "mark"}'),
     "event after the end of time": (jn.EVENT, b'{"tick": 1e999, "kind": "mark"}'),
     "event beyond 64 bits": (jn.EVENT, b'{"tick": 18446744073709551616, "kind": "mark"}'),
+    "level at no drive": (jn.EVENT, b'{"tick": 5, "kind": "level", "level": 1, "direction": "rising"}'),
     "event not in UTF-8": (jn.EVENT, b"\xff\xfe{}"),
     "result of text": (jn.RESULT, b"{"),
     "short frame": (jn.FRAME, b"abc"),

@@ -1,0 +1,201 @@
+"""All checks of a session file, each on its own, so that one damage does not hide another."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from drivers.channels import Channel
+from rig.description import RigDescription
+from rig.evaluation.comparison import WITHIN, differences, told_verdicts, verdict_difference
+from rig.evaluation.replay import Replay
+from rig.problem import FileProblems
+from rig.record import overview
+from rig.record.digests import problems as digest_problems
+from rig.record.errors import Damaged
+from rig.session import Session, Stream, open_session
+from rig.verdicts import verdict_to_json
+from rig.verification.check import WRONG, Check, counted, found, skipped
+from rig.verification.course import event_problems, loss_event_problems
+from rig.verification.rows import RowsFound, clock_problems, go_through, loss_problems
+
+NAMES = ("structure", "digests", "clock", "rows", "events", "texts", "overview", "results")
+
+
+def verify(path: Path, software: str, rig_of: Callable[[Session], RigDescription]) -> list[Check]:
+    """The checks in order of NAMES. `software` is this version, `rig_of` the rig of a session with its seed.
+
+    FileNotFoundError if there is no such file.
+    """
+    checks: list[Check] = []
+    try:
+        session = open_session(path)
+    except Damaged as error:
+        checks.append(found("structure", [str(error)], ""))
+        checks.append(_digests(path))
+        return checks + [skipped(name, "the file cannot be opened") for name in NAMES[2:]]
+    with session:
+        board = session.streams["board"]
+        checks.append(found("structure", [], _structure(session)))
+        checks.append(_digests(path))
+        rows = _gone_through(board)
+        checks += [_clock(board, rows), _rows(board, rows), _events(session)]
+        checks += [_texts(session, software), _overview(board), _results(session, software, rig_of)]
+    return checks
+
+
+def _structure(session: Session) -> str:
+    board = session.streams["board"]
+    return ", ".join(
+        (
+            f"{counted(len(board), 'row')} of {counted(len(board.channels), 'channel')}",
+            counted(len(session.events), "event"),
+        )
+    )
+
+
+def _digests(path: Path) -> Check:
+    try:
+        problems = digest_problems(path)
+    except Damaged:
+        return skipped("digests", "the file cannot be looked through")
+    if problems is None:
+        return skipped("digests", "the session has none, it was sealed before there were any")
+    return found("digests", problems, "everything is as it was when it was sealed, or amended since")
+
+
+def _gone_through(board: Stream) -> RowsFound | Damaged:
+    try:
+        parts = zip(board.parts("tick"), board.parts("time_s"), strict=True)
+        return go_through(parts, board.tick_hz, board.row_period_ticks)
+    except Damaged as error:
+        return error
+
+
+def _clock(board: Stream, rows: RowsFound | Damaged) -> Check:
+    if isinstance(rows, Damaged):
+        return found("clock", [str(rows)], "")
+    steps = f"in steps of {board.row_period_ticks}" if board.row_period_ticks else "with no row period told"
+    return found("clock", clock_problems(rows), f"ticks increase {steps}, times follow from them")
+
+
+def _rows(board: Stream, rows: RowsFound | Damaged) -> Check:
+    if isinstance(rows, Damaged):
+        return skipped("rows", "the ticks cannot be read")
+    if rows.backward or rows.uneven or not board.row_period_ticks:
+        return skipped("rows", "they can be counted by ticks in whole row periods only")
+    problems = loss_problems(rows, board.losses, board.first_tick, board.last_tick, board.row_period_ticks)
+    lost = sum(loss[1] for loss in board.losses)
+    good = f"{counted(rows.rows, 'row')} without a gap"
+    if rows.gaps:
+        good = (
+            f"{counted(rows.rows, 'row')} and {lost} lost, in {counted(len(rows.gaps), 'gap')} told as such"
+        )
+    return found("rows", problems, good)
+
+
+def _events(session: Session) -> Check:
+    board, events = session.streams["board"], session.events
+    try:
+        span = (board.first_tick, board.last_tick) if len(board) else None
+    except Damaged:
+        span = None
+    problems = event_problems(events, span, board.tick_hz)
+    if any(event.kind == "run" for event in events):  # journalled by a run, not by a script
+        problems += loss_event_problems(events, session.losses, span[1] if span else 0)
+    return found(
+        "events", problems, f"{len(events)} in order, each begin with its end or cut short by a halt"
+    )
+
+
+def _texts(session: Session, software: str) -> Check:
+    unread: list[str] = []
+    for read in (lambda: session.rig, lambda: session.protocol):
+        try:
+            read()
+        except FileProblems as error:
+            unread += [str(problem) for problem in error.problems]
+    problems = _header_problems(session.header, session.streams["board"])
+    if unread and session.software != software and not problems:
+        return skipped("texts", f"written by {session.software}, {software} does not read them: {unread[0]}")
+    return found(
+        "texts", unread + problems, "rig and protocol can be read, the header agrees with the columns"
+    )
+
+
+def _header_problems(header: dict[str, Any], board: Stream) -> list[str]:
+    problems = [
+        f"the header gives {header.get(name, 0)!r} as {name}, the stream {getattr(board, name)}"
+        for name in ("tick_hz", "row_period_ticks", "frame_rows")
+        if header.get(name, 0) != getattr(board, name)
+    ]
+    try:
+        told = [Channel(**fields) for fields in header["channels"]]
+    except (KeyError, TypeError):
+        told = []
+    if told != list(board.channels):
+        problems.append("the channel table in the header is not that of the columns")
+    return problems
+
+
+def _overview(board: Stream) -> Check:
+    wanted = overview.levels(len(board))
+    problems: list[str] = []
+    levels = 0
+    for channel in board.channels:
+        try:
+            stored = board.stored_levels(channel.name)
+            made = overview.pyramid(board.parts(channel.name), len(board)) if stored else {}
+        except (Damaged, ValueError, TypeError, AttributeError) as error:
+            problems.append(f"that of {channel.name} cannot be compared ({error})")
+            continue
+        levels += len(stored)
+        if sorted(stored) != wanted:
+            problems.append(f"that of {channel.name} has levels of {sorted(stored)} rows, expected {wanted}")
+        elif not all(_equal(stored[size], made[size]) for size in stored):
+            problems.append(f"that of {channel.name} does not follow from its rows")
+    if wanted and not levels and len(problems) == len(board.channels):
+        return skipped("overview", "the session has none, it was sealed before there were any")
+    return found("overview", problems, f"{counted(levels, 'level')}, each the least and greatest of its rows")
+
+
+def _equal(one: NDArray[np.int32], other: NDArray[np.int32]) -> bool:
+    return one.dtype == other.dtype and np.array_equal(one, other)
+
+
+def _results(session: Session, software: str, rig_of: Callable[[Session], RigDescription]) -> Check:
+    live, final = told_verdicts(session.results["live"]), session.results["final"]
+    if live is None and final is None:
+        return skipped("results", "the session holds neither verdicts nor results")
+    others = sorted({session.software, session.results_software} - {software})
+    if others:
+        return skipped("results", f"worked out by {' and '.join(others)}, this is {software}")
+    try:
+        again = Replay(rig_of(session), session.streams["board"], session.events)
+        for _ in again.steps():
+            pass
+        now = json.loads(json.dumps(again.finish().to_json()))
+    except (Damaged, FileProblems):
+        return skipped("results", "rows or rig cannot be read")
+    except (ArithmeticError, LookupError, TypeError, ValueError) as error:
+        return found("results", [f"the analysis cannot be done ({type(error).__name__}: {error})"], "")
+    problems: list[str] = []
+    if live is not None:
+        verdicts = [verdict_to_json(verdict) for verdict in again.verdicts]
+        difference = verdict_difference(live, verdicts, complete=final is not None)
+        problems += [difference] if difference else []
+    if final is not None:
+        problems += differences(final, now)
+    told = [counted(len(live), "verdict")] if live is not None else []
+    told += ["the results"] if final is not None else []
+    return found("results", problems, f"{' and '.join(told)} follow from rows and events within {WITHIN}")
+
+
+def sound(checks: list[Check]) -> bool:
+    """Whether nothing is wrong, as far as it could be checked."""
+    return not any(check.outcome == WRONG for check in checks)
