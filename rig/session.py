@@ -256,6 +256,29 @@ class Stream:
         return Damaged(f"{self._path}: the ticks of stream {self._group.name} do not increase")
 
 
+class SamplerStream:
+    """Rows of a text sampler, timed by their arrival; `limits` says what they are not good for."""
+
+    def __init__(self, group: h5py.Group) -> None:
+        self._group = group
+        self.limits = str(group.attrs.get("limits", ""))
+        self.damaged_lines = int(group.attrs.get("damaged_lines", 0))
+        self.columns = tuple(name for name, data in group.items() if "scale" in data.attrs)
+
+    @property
+    def time_s(self) -> NDArray[np.float64]:
+        """Board time of the arrival since the board's first row, s, shape (n,)."""
+        return self._group["time_s"][:]
+
+    def unit(self, name: str) -> str:
+        return str(self._group[name].attrs["unit"])
+
+    def __getitem__(self, name: str) -> NDArray[np.float64]:
+        """Values of a column in its unit, shape (n,)."""
+        data = self._group[name]
+        return data[:] * float(data.attrs["scale"]) + float(data.attrs["offset"])
+
+
 class Session:
     """A session file, open for reading; close it, or use it in a `with`."""
 
@@ -269,6 +292,9 @@ class Session:
         self.streams: Mapping[str, Stream] = {
             name: Stream(group, path, self.losses if name == "board" else ())
             for name, group in file["streams"].items()
+        }
+        self.samplers: Mapping[str, SamplerStream] = {
+            name: SamplerStream(group) for name, group in file.get("samplers", {}).items()
         }
         self.rig_text = _text(file, "rig")
         self.protocol_text = _text(file, "protocol")

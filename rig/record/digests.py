@@ -47,6 +47,11 @@ class DigestingFile:
             self._file[path].attrs[name] = value
         self.attributes[path] = of_attributes(values)
 
+    def group(self, path: str, values: Mapping[str, Any]) -> None:
+        """A group with attributes."""
+        self._file.create_group(path)
+        self.attribute_set(path, values)
+
     def text(self, path: str, text: str) -> None:
         self._file.create_dataset(path, data=text, dtype=TEXT)
         self.datasets[path] = hashlib.sha256(text.encode()).hexdigest()

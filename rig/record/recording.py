@@ -15,6 +15,8 @@ from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
 from rig.events import Event, unreadable
 from rig.record import journal as jn
 from rig.record.errors import Damaged
+from rig.record.sampler_rows import SamplerRows
+from rig.record.samples import Samples
 
 #: Columns every stream has, so that no channel can be called so.
 COLUMNS = ("tick", "time_s", "status")
@@ -82,6 +84,7 @@ class Recording:
     losses: list[tuple[int, int, int, int]] = field(default_factory=list)  # tick, rows, frames, overruns
     live: list[dict[str, Any]] = field(default_factory=list)
     final: dict[str, Any] | None = None
+    samplers: dict[str, SamplerRows] = field(default_factory=dict)
     ended: bool = False
     damage: str = ""
 
@@ -151,6 +154,15 @@ def read_recording(path: Path) -> Recording:
                 recording.events.append(event)
             except (ValueError, KeyError, TypeError, OverflowError):
                 recording.damage = f"an event that is none (record {record.sequence})"
+                break
+        elif record.kind == jn.SAMPLES:
+            try:
+                samples = Samples.from_json(record.fields())
+                if not samples.sampler.isidentifier():
+                    raise ValueError("no name of a sampler")
+                recording.samplers.setdefault(samples.sampler, SamplerRows()).add(samples)
+            except ValueError:
+                recording.damage = f"rows of a sampler that are none (record {record.sequence})"
                 break
         elif record.kind == jn.RESULT:
             try:

@@ -11,6 +11,7 @@
                            (16, 256, 4096 ...; `rig.record.overview`), for drawing
     /events/tick, kind, data      one entry an event; data is JSON text
     /losses/tick, rows, frames, overruns   lost before the row at that tick
+    /samplers/NAME/...            rows of text samplers, see rig.record.sampler_rows
     /results/live          JSON list of all verdicts in the order they were told (`rig.verdicts`)
     /results/final         JSON of the results (`rig.results`), null if the run was cut off; its attribute
                            software: what worked it out
@@ -35,7 +36,7 @@ import h5py
 import numpy as np
 
 from rig.events import Event
-from rig.record import digests, overview
+from rig.record import digests, overview, sampler_rows
 from rig.record.durability import lock, sync_folder
 from rig.record.errors import JournalFailure, NameTaken
 from rig.record.recording import Recording, read_recording
@@ -115,6 +116,7 @@ def _fill(file: h5py.File, recording: Recording) -> digests.DigestingFile:
         },
     )
     _fill_board(file, book, recording)
+    _fill_samplers(book, recording)
     events = recording.events
     book.numbers("/events/tick", np.array([event.tick for event in events], dtype=np.uint64))
     book.texts("/events/kind", [event.kind for event in events])
@@ -138,8 +140,7 @@ def _fill(file: h5py.File, recording: Recording) -> digests.DigestingFile:
 def _fill_board(file: h5py.File, book: digests.DigestingFile, recording: Recording) -> None:
     header, pieces, shape = recording.header, recording.pieces, (len(recording),)
     place, tick_hz = "/streams/board", int(header["tick_hz"])
-    file.create_group(place)
-    book.attribute_set(
+    book.group(
         place,
         {
             "tick_hz": tick_hz,
@@ -160,6 +161,16 @@ def _fill_board(file: h5py.File, book: digests.DigestingFile, recording: Recordi
         book.attribute_set(name, {**told, **numbers, "column": index})
         for rows_per_bin, bins in overview.pyramid(recording.column(index), len(recording)).items():
             book.column(f"/overview/board/{channel.name}/{rows_per_bin}", bins.shape, "i4", [bins])
+
+
+def _fill_samplers(book: digests.DigestingFile, recording: Recording) -> None:
+    first = int(recording.pieces[0].tick[0]) if recording.pieces else 0
+    told = {
+        str(one.get("name")): one for one in recording.header.get("samplers", []) if isinstance(one, dict)
+    }
+    for name, rows in recording.samplers.items():
+        place, tick_hz = f"/samplers/{name}", int(recording.header["tick_hz"])
+        sampler_rows.fill(book, place, rows, told.get(name, {}), first, tick_hz)
 
 
 def _event_text(event: Event) -> str:

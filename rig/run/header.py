@@ -6,6 +6,7 @@ from dataclasses import asdict
 from typing import Any
 
 from drivers.contract import Hello
+from drivers.text_lines import TextSampler
 from rig.description import RigDescription
 from rig.steps import Protocol
 
@@ -34,8 +35,22 @@ def run_header(
         "rig_text": rig.text,
         "protocol_text": protocol.text,
         "calibrations": {},
+        "samplers": _samplers(rig.samplers),
         "context": dict(rig.context),
         "pace": pace,
         "seed": rig.world.seed if rig.world is not None else None,
         "acknowledged_by": acknowledged_by,
     }
+
+
+def _samplers(samplers: tuple[TextSampler, ...]) -> list[dict[str, Any]]:
+    """What a journal's header says of a rig's samplers."""
+    return [
+        {
+            "name": one.name,
+            "limits": list(one.limits),
+            "tick_hz": one.tick_hz,
+            "columns": [asdict(column) for column in one.columns],
+        }
+        for one in samplers
+    ]
