@@ -1,7 +1,7 @@
 """A board behind the driver contract: its bytes come over any wire (`drivers.ports`).
 
 Commands are acknowledged before the next one goes out. An answer that does not come is asked for again under
-the same number, which the board does not carry out twice; three times unanswered is a dead link. Rows that
+the same number, which the board does not carry out twice; six times unanswered is a dead link. Rows that
 come meanwhile are kept for the next read.
 """
 
@@ -23,8 +23,9 @@ from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
 #: Opening a port resets many boards: their boot loader may take seconds.
 BOOT_S = 6.0
 ASK_AGAIN_S = 0.25
-ANSWER_S = 0.12
-TRIES = 3
+# Answers come within some ms; asked again soon enough, one lost answer does not outlast a watchdog of 200 ms.
+ANSWER_S = 0.06
+TRIES = 6
 #: A board stops sending rows to a host it has not heard for 2 s; one that only reads speaks up in time.
 SPEAK_UP_S = 1.0
 #: Frames out of order in a row that mean a board counting from zero again.

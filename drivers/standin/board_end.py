@@ -66,7 +66,7 @@ class BoardEnd:
         self._overruns = 0
         self._last_frame: RowFrame | None = None
         self._last_answer: bytes | None = None
-        self._last_number: int | None = None
+        self._last_command: ms.Command | None = None
         self._beat_tick: int | None = None  # the row the newest heartbeat named
         self._beat_at = 0  # tick at which it was taken, not set back by a restart
         self._enabled = False
@@ -100,8 +100,8 @@ class BoardEnd:
         return self._queue[0] if self._queue else b""
 
     def sent(self, taken: int) -> None:
-        self._pending -= taken
         rest = self.outgoing()[taken:]
+        self._pending = len(rest)
         self._queue.clear()
         if rest:
             self._queue.append(rest)
@@ -185,7 +185,7 @@ class BoardEnd:
         self._queue.clear()
         self._pending = 0
         self._streaming = False
-        self._last_number = self._beat_tick = None
+        self._last_command = self._beat_tick = self._boot_at_s = None
         self._unwrapper.forget()
 
     # Listening
@@ -194,8 +194,10 @@ class BoardEnd:
         match message:
             case ms.AskHello():
                 self._queue_message(ms.HelloText(ms.VERSION, self._text))
+                # Another host numbers its commands anew: none of them may be taken for one of before.
+                self._last_command = None
                 if not self._streaming:
-                    self._beat_tick = self._last_number = None  # another host numbers its commands anew
+                    self._beat_tick = None
                 self._streaming = True
             case ms.Heartbeat(tick):
                 self._beat(tick)
@@ -213,7 +215,7 @@ class BoardEnd:
         self._bench.heartbeat()
 
     def _obey(self, command: ms.Command) -> None:
-        if command.number == self._last_number and self._last_answer is not None:
+        if command == self._last_command and self._last_answer is not None:
             self._push(self._last_answer)  # the answer was lost, not the command
             return
         self.counts["commands"] += 1
@@ -225,7 +227,7 @@ class BoardEnd:
         except BenchMisuse as lack:
             result, reason = ms.Result.LACKING, str(lack)
         answer = ms.Answer(command.number, result, self._board_tick(tick), value, reason)
-        self._last_number, self._last_answer = command.number, wrap(ms.pack(answer))
+        self._last_command, self._last_answer = command, wrap(ms.pack(answer))
         self._push(self._last_answer)
         if command.code is ms.Code.CLOSE:
             self._streaming = False

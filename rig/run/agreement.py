@@ -14,6 +14,9 @@ from rig.description import RigDescription
 #: A converter's scale differs from its nominal value by calibration, never by this much.
 SCALE_FACTOR = 1.5
 
+#: A watchdog of 200 ms is what is asked for; one far slower is none.
+LONGEST_WATCHDOG_S = 0.5
+
 
 def agreed(rig: RigDescription, hello: Hello) -> Hello:
     """The hello with the rig's own scales, zeros and ranges in the board's order of channels.
@@ -34,6 +37,11 @@ def agreed(rig: RigDescription, hello: Hello) -> Hello:
         raise BenchMisuse(
             f"a frame of the board takes {1e3 * hello.frame_rows / row_hz:.0f} ms, more than half of "
             f"limits.stale = {1e3 * rig.limits.stale_s:.0f} ms"
+        )
+    if hello.heartbeat_timeout_s > LONGEST_WATCHDOG_S:
+        raise BenchMisuse(
+            f"the board waits {hello.heartbeat_timeout_s:g} s for a heartbeat before it acts, more than "
+            f"{LONGEST_WATCHDOG_S:g} s"
         )
     channels = tuple(
         _agreed(channel, channel_of(described[channel.name]), hello.name)

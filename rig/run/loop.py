@@ -169,8 +169,9 @@ class Loop:
             if self._origin is None:
                 self._origin = int(block.tick[0])
             trips = self._interlocks(block, notices)
-            if not trips:
-                # Also after a trip, once it has been dealt with: a ramp down needs a board that stays on.
+            if not trips and frame is reading.frames[-1]:
+                # Once all that was read has passed. Also after a trip, once it has been dealt with: a ramp down needs
+                # a board that stays on.
                 self._bench.heartbeat()
             self._record(frame, block)
             if self._rows_seen is not None:

