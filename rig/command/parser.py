@@ -20,6 +20,7 @@ COMMANDS = {
     "verify": "prove that a session is what was recorded, and that its results follow from it",
     "report": "write the report of a session",
     "recover": "seal the journal of a run that was cut off",
+    "desk": "open the window: prepare, run and watch, or replay a session",
     "stand-in": "serve a simulated rig in a board's own bytes on a pseudo-terminal or a TCP port",
     "about": "tell versions, serial ports and whether the installation is sound",
 }
@@ -79,6 +80,7 @@ def build() -> argparse.ArgumentParser:
         help="times real time, 0.1 or more (default: as fast as it computes)",
     )
     replay.add_argument("--json", action="store_true", help="results as JSON on stdout")
+    replay.add_argument("--desk", action="store_true", help="in the window")
     replay.add_argument("--quiet", action="store_true", help="no progress on stderr")
 
     verify = made["verify"]
@@ -111,6 +113,9 @@ def build() -> argparse.ArgumentParser:
         help="let something go wrong, e.g. 'open_guard at 12 s'; also one a line on standard input",
     )
     stand_in.add_argument("--log", metavar="FILE", help="what happens at the board, as JSON lines")
+
+    desk = made["desk"]
+    desk.add_argument("session", metavar="SESSION", nargs="?", help="a session to replay")
 
     made["about"].add_argument("--json", action="store_true", help="as JSON on stdout")
     return parser

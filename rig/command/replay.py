@@ -8,6 +8,7 @@ import math
 import sys
 from collections.abc import Iterator
 from dataclasses import replace
+from pathlib import Path
 
 from drivers.clock import Clock, HostClock
 from rig.command.exits import CommandError, Exit
@@ -27,6 +28,8 @@ UPDATE_S = 0.02
 
 
 def main(words: argparse.Namespace) -> Exit:
+    if words.desk:
+        return _in_the_window(words)
     speed: float | None = words.speed
     if speed is not None and not SLOWEST <= speed < math.inf:
         raise CommandError(f"--speed {speed:g}: expected a number of times real time, {SLOWEST} or more")
@@ -42,6 +45,15 @@ def main(words: argparse.Namespace) -> Exit:
     # Beside JSON on stdout nothing else may stand.
     print(sentence, file=sys.stderr if words.json else sys.stdout)
     return Exit.DONE if same else Exit.DAMAGED
+
+
+def _in_the_window(words: argparse.Namespace) -> Exit:
+    if words.json or words.speed is not None:
+        raise CommandError("--desk: speed is chosen in the window, and there is no JSON; expected SESSION alone")
+    opened(words.session).close()
+    from rig.command.desk import show
+
+    return show(Path(words.session))
 
 
 def replayed(
