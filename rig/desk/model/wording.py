@@ -141,7 +141,7 @@ def margin_words(margin: Mapping[str, Any]) -> tuple[str, str, str]:
     cause, unit = str(margin["cause"]), str(margin["unit"])
     scale = 100.0 if unit == "1" else 1.0
     value, limit = scale * float(margin["value"]), scale * float(margin["limit"])
-    digits = 0 if abs(limit) >= 100.0 else 1 if abs(limit) >= 10.0 else 2
+    digits = 0 if abs(limit) >= 50.0 else 1 if abs(limit) >= 10.0 else 2
     told = f"{value:.{digits}f}"
     if not told.strip("-0."):
         told = told.lstrip("-")

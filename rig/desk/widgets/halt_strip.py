@@ -3,7 +3,17 @@
 from __future__ import annotations
 
 from PySide6.QtCore import QPointF, QRectF, QSize, Qt, Signal
-from PySide6.QtGui import QColor, QFont, QFontMetricsF, QKeyEvent, QMouseEvent, QPainter, QPaintEvent, QPen
+from PySide6.QtGui import (
+    QColor,
+    QFont,
+    QFontMetricsF,
+    QKeyEvent,
+    QMouseEvent,
+    QPainter,
+    QPaintEvent,
+    QPen,
+    QResizeEvent,
+)
 from PySide6.QtWidgets import QAbstractButton, QSizePolicy, QWidget
 
 from rig.desk.model.run_model import RunModel
@@ -93,7 +103,13 @@ class HaltStrip(QAbstractButton):
 
     def sizeHint(self) -> QSize:
         em = self.fontMetrics().height()
-        return QSize(round(9.8 * em), 24 * em)
+        # Wider on a tall screen, so that the letters grow with it.
+        wide = min(max(9.8 * em, 0.17 * self.height()), 15.0 * em)
+        return QSize(round(wide), 24 * em)
+
+    def resizeEvent(self, event: QResizeEvent) -> None:
+        if event.size().height() != event.oldSize().height():
+            self.updateGeometry()
 
     def minimumSizeHint(self) -> QSize:
         em = self.fontMetrics().height()

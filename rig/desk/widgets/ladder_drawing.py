@@ -151,7 +151,7 @@ class Drawing:
     def _ticks(self, painter: QPainter) -> None:
         if not self.view.places:
             return
-        many = max(2, int((self.frame.bottom - self.frame.top) / (2.6 * self.sizes.em)))
+        many = min(12, max(2, int((self.frame.bottom - self.frame.top) / (2.6 * self.sizes.em))))
         pointer = self.view.pointer
         for value in ticks(self.view.low, self.view.high, many):
             y = self.frame.y(self.view, value)

@@ -214,6 +214,10 @@ class PromptBanner(QFrame):
         self._paint_texts(heading)
         set_shown(self.mark, bool(shape))
         set_shown(self, True)
+        self.heading.fit()
+        layout = self.layout()
+        if layout is not None:
+            layout.activate()
         self.update()
         if heading and heading != before:
             self.setAccessibleDescription(heading)

@@ -12,14 +12,18 @@ Lengths are in em, so that they grow with the font.
 from __future__ import annotations
 
 import string
+from pathlib import Path
 
+from PySide6.QtCore import Qt
 from PySide6.QtGui import QColor, QFont, QPalette
 from PySide6.QtWidgets import QApplication, QStyleFactory, QToolTip, QWidget
 
-from rig.desk.theme import Theme
+from rig.desk.theme import Theme, contrast
 from rig.desk.widgets.shapes import blended
 
 BASE_POINTS = 10.5
+#: Marks of check boxes and lists, one of each for every theme.
+IMAGES = Path(__file__).parent / "images"
 
 SHEET = string.Template("""
 QMainWindow, QDialog { background: $ground; }
@@ -62,6 +66,18 @@ QLineEdit:focus, QPlainTextEdit:focus, QTextEdit:focus, QSpinBox:focus, QDoubleS
     border-color: $ring;
 }
 QLineEdit:disabled, QLineEdit[readOnly="true"], QComboBox:disabled { color: $faint; background: $ground; }
+QAbstractSpinBox > QLineEdit { border: none; padding: 0 0.4em; background: transparent; }
+QComboBox::drop-down { border: none; width: 1.8em; }
+QComboBox::down-arrow { image: url("$images/down-$name.svg"); width: 0.85em; height: 0.85em; }
+QSpinBox::up-button, QDoubleSpinBox::up-button, QSpinBox::down-button, QDoubleSpinBox::down-button {
+    border: none; width: 1.6em; background: transparent;
+}
+QSpinBox::up-arrow, QDoubleSpinBox::up-arrow {
+    image: url("$images/up-$name.svg"); width: 0.7em; height: 0.7em;
+}
+QSpinBox::down-arrow, QDoubleSpinBox::down-arrow {
+    image: url("$images/down-$name.svg"); width: 0.7em; height: 0.7em;
+}
 QComboBox QAbstractItemView {
     color: $ink; background: $panel; border: 1px solid $edge;
     selection-background-color: $accent; selection-color: $accent_ink;
@@ -92,6 +108,19 @@ QTabBar:focus::tab:selected, QTabBar::tab:selected:focus {
 QCheckBox, QRadioButton { color: $ink; spacing: 0.5em; padding: 0.2em 0.3em; border: 2px solid transparent;
     border-radius: 4px; }
 QCheckBox:focus, QRadioButton:focus { border-color: $ring; }
+QCheckBox::indicator, QRadioButton::indicator, QListView::indicator, QTreeView::indicator {
+    width: 1.05em; height: 1.05em; border: 2px solid $edge; border-radius: 3px; background: $panel;
+}
+QCheckBox::indicator:checked, QListView::indicator:checked, QTreeView::indicator:checked {
+    image: url("$images/check-$name.svg"); background: $accent; border-color: $accent;
+}
+QRadioButton::indicator { border-radius: 0.62em; }
+QRadioButton::indicator:checked {
+    border-color: $accent;
+    background: qradialgradient(cx: 0.5, cy: 0.5, radius: 0.5, fx: 0.5, fy: 0.5,
+        stop: 0 $accent, stop: 0.55 $accent, stop: 0.65 $panel, stop: 1 $panel);
+}
+QCheckBox::indicator:disabled, QRadioButton::indicator:disabled { border-color: $rule; background: $ground; }
 QGroupBox { color: $ink; border: 1px solid $rule; border-radius: 4px; margin-top: 0.9em; padding-top: 0.5em; }
 QGroupBox::title { subcontrol-origin: margin; left: 0.7em; padding: 0 0.3em; color: $faint; }
 
@@ -103,6 +132,12 @@ QProgressBar { color: $ink; background: $raised; border: none; border-radius: 4p
 QProgressBar::chunk { background: $accent; border-radius: 4px; }
 QSplitter::handle { background: $ground; }
 QSplitter::handle:hover { background: $accent; }
+QSlider::groove:horizontal { height: 0.3em; background: $raised; border-radius: 2px; }
+QSlider::sub-page:horizontal { background: $accent; border-radius: 2px; }
+QSlider::handle:horizontal {
+    width: 0.9em; margin: -0.4em 0; background: $panel; border: 2px solid $accent; border-radius: 4px;
+}
+QSlider { border: 2px solid transparent; border-radius: 4px; min-height: 1.4em; }
 QSlider:focus { border: 2px solid $ring; border-radius: 4px; }
 
 QScrollArea { border: none; background: transparent; }
@@ -122,6 +157,7 @@ def style_sheet(theme: Theme) -> str:
     """Style sheet of the whole application."""
     return SHEET.substitute(
         vars(theme),
+        images=IMAGES.as_posix(),
         ring=ring(theme),
         edge=edge(theme),
         hover=blended(theme.raised, theme.ink, 0.08).name(),
@@ -138,8 +174,11 @@ def ring(theme: Theme) -> str:
 
 
 def edge(theme: Theme) -> str:
-    """Outline of what can be pressed or typed into: 3 : 1 against its ground (WCAG 2.2, 1.4.11)."""
-    return blended(theme.rule, theme.faint, 0.75).name()
+    """Outline of what can be pressed or typed into: a little more than 3 : 1 against its ground (WCAG 2.2, 1.4.11),
+    and no more, so that the focus ring stands out from it."""
+    shades = (blended(theme.rule, theme.faint, 0.05 * step).name() for step in range(20))
+    grounds = (theme.ground, theme.panel)
+    return next((one for one in shades if min(contrast(one, back) for back in grounds) > 3.2), theme.faint)
 
 
 def palette(theme: Theme) -> QPalette:
@@ -199,8 +238,10 @@ def set_kind(widget: QWidget, kind: str) -> None:
     """Give a widget a variant of the style sheet, also after it has been shown."""
     if widget.property("kind") != kind:
         widget.setProperty("kind", kind)
-        widget.style().unpolish(widget)
-        widget.style().polish(widget)
+        if widget.testAttribute(Qt.WidgetAttribute.WA_WState_Polished):
+            # Not before: a font set by hand would be lost when it is shown.
+            widget.style().unpolish(widget)
+            widget.style().polish(widget)
 
 
 def set_shown(widget: QWidget, shown: bool) -> None:
