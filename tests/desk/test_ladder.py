@@ -128,6 +128,14 @@ def test_after_a_trip_the_same_level_is_next_and_the_plan_goes_on_from_there() -
     assert place(view, "rising", 8.0).here
 
 
+def test_a_rung_that_will_be_visited_again_is_marked_as_next() -> None:
+    plan = (*PLAN[:2], PLAN[0])  # 7 V, 8 V, 7 V again, all rising
+    view = ladder(walked(plan, 2).model, plan)
+    assert len(view.places) == 2
+    assert [one.next for one in view.places] == [True, False]
+    assert view.next_words == "next: 7.00 V rising, 25.2 Hz"
+
+
 def test_while_no_flap_rate_is_known_the_height_is_the_drive() -> None:
     run = ToldRun()
     run.level("rising", 7.0)
