@@ -153,6 +153,18 @@ def test_after_a_halt_by_hand_it_says_what_is_so(host: Host, qapp: QApplication)
     assert offered(banner) == {"go_on", "end"}
 
 
+def test_a_replay_asks_nothing_and_no_key_answers(host: Host, qapp: QApplication, qtbot: QtBot) -> None:
+    run = waiting()
+    tell(host, run, qapp)
+    host.banner.set_replay(True)
+    assert not tell(host, run, qapp).isVisible()
+    with qtbot.assertNotEmitted(host.banner.go_on), qtbot.assertNotEmitted(host.banner.end):
+        qtbot.keyClick(host, Qt.Key.Key_G)
+        qtbot.keyClick(host, Qt.Key.Key_E)
+    host.banner.set_replay(False)
+    assert offered(tell(host, run, qapp)) == {"go_on", "end"}
+
+
 @pytest.mark.parametrize(
     ("key", "button"),
     [

@@ -8,7 +8,7 @@
     off, still turning                keep clear              none
     off, waiting                      why                     Go on at this level (G), End the run (E)
 
-Otherwise it is hidden.
+Otherwise, and in a replay, it is hidden.
 """
 
 from __future__ import annotations
@@ -122,6 +122,7 @@ class PromptBanner(QFrame):
     def __init__(self, theme: Theme, parent: QWidget | None = None) -> None:
         super().__init__(parent)
         self._theme = theme
+        self._replay = False
         self._tone = "slim"
         self._shape = ""
         self.heading = FittingText()
@@ -184,7 +185,19 @@ class PromptBanner(QFrame):
         self._paint_texts()
         self.update()
 
+    def set_replay(self, on: bool) -> None:
+        """A recorded run is shown: nothing is asked, and no key answers."""
+        self._replay = on
+        if on:
+            self._rest()
+
+    def _rest(self) -> None:
+        set_shown(self, False)
+        self._offer(set())
+
     def refresh(self, model: RunModel) -> None:
+        if self._replay:
+            return
         mark = tap_to_judge(model)
         judge = {"redo", "reject"} if mark is not None and mark.outcome != "excluded" else set()
         if model.phase == "running" and model.on_hand is not None and model.on_hand.taps:
@@ -201,8 +214,7 @@ class PromptBanner(QFrame):
         elif judge:
             self._show("slim", "", detail, shape, judge)
         else:
-            set_shown(self, False)
-            self._offer(set())
+            self._rest()
 
     def _show(self, tone: str, heading: str, detail: str, shape: str, buttons: set[str]) -> None:
         before = self.heading.text if not self.isHidden() else ""
