@@ -156,13 +156,19 @@ def test_losses_notices_and_pictures_are_kept() -> None:
         model,
         event(4.0, "loss", rows=20, frames=1, overruns=0),
         event(4.1, "notice", notice="latch", cause="guard"),
+        event(4.1, "notice", notice="index", channel="crank"),
+        event(4.15, "notice", notice="sampler", text="strain has failed"),
         event(4.2, "mark", text="changed the wing"),
         {"picture": {"tap": {"tap": {"tap": 3}, "time_s": [0.0]}}},
         {"picture": {"map": {"levels": []}}},
         {"picture": {"theory": {"averaged_fold_hz": 26.0, "curve": []}}},
     )
     assert (model.lost_rows, model.lost_frames) == (20, 1)
-    assert [words for _, words in model.notes] == ["guard", "changed the wing"]
+    assert [words for _, words in model.notes] == [
+        "the board switched off by itself: guard",
+        "strain has failed",
+        "changed the wing",
+    ]
     assert model.last_tap == 3 and 3 in model.pictures and model.theory["averaged_fold_hz"] == 26.0
 
 

@@ -37,6 +37,16 @@ PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME = (
 )
 Changed = set[str]
 
+#: Notices of a board in an operator's words; those of no use to one are left out.
+NOTICES = {
+    "latch": "the board switched off by itself",
+    "index_slip": "the index pulse came at another count: an encoder disc slips",
+    "damaged_bytes": "bytes damaged on the line",
+    "damaged_frame": "a frame damaged on the line",
+    "sampler": "",
+}
+SILENT = ("index", "sync_edge")
+
 
 @dataclass
 class TapMark:
@@ -298,8 +308,12 @@ class RunModel:
         return self._note(event, str(event.get("text", "")))
 
     def _on_notice(self, event: Fields) -> Changed:
-        words = str(event.get("text") or event.get("cause") or event.get("notice", ""))
-        return self._note(event, words)
+        kind = str(event.get("notice", ""))
+        if kind in SILENT:
+            return set()
+        words = str(event.get("text") or event.get("cause") or "")
+        named = NOTICES.get(kind, kind.replace("_", " "))
+        return self._note(event, f"{named}: {words}" if words and named else named or words)
 
     def _on_loss(self, event: Fields) -> Changed:
         self.lost_rows += int(event.get("rows", 0))
