@@ -15,6 +15,7 @@ import subprocess
 import sys
 import tempfile
 import time
+from contextlib import ExitStack
 from pathlib import Path
 
 import numpy as np
@@ -82,11 +83,13 @@ def cpu_s(pid: int) -> float:
 def endure(row_hz: float, frame_rows: int, channels: int, where: str, seconds: float) -> dict[str, object]:
     here = Path(__file__).parent
     words = [f"{row_hz}", f"{frame_rows}", f"{channels}", where]
-    with tempfile.TemporaryDirectory() as folder:
+    with ExitStack() as stack:
+        folder = stack.enter_context(tempfile.TemporaryDirectory())
         source = subprocess.Popen(
             [sys.executable, str(here / "synthetic_bench.py"), *words], stdout=subprocess.PIPE, text=True
         )
         assert source.stdout is not None
+        stack.callback(source.kill)
         out = Path(folder) / "run.h5"
         job = Job(
             rig_text=rig_text(row_hz, frame_rows, channels),
