@@ -18,7 +18,9 @@ Fewer bytes at the end than a head has are free too. Sizes have eight bytes in e
 from __future__ import annotations
 
 import struct
+from collections.abc import Iterable, Iterator
 from pathlib import Path
+from typing import BinaryIO
 
 SIGNATURE = b"GCOL\x01\0\0\0"
 HEAD = struct.Struct("<8sQ")
@@ -28,31 +30,49 @@ SMALLEST = 4096
 READ_BYTES = 1 << 23
 
 
-def damaged_heap(path: Path) -> int | None:
-    """Where the first collection of texts begins that cannot be gone through; None if all can."""
+Stretch = tuple[int, int]  # first byte, and the one after the last
+
+
+def damaged_heap(path: Path, columns: Iterable[Stretch] = ()) -> int | None:
+    """Where the first collection of texts begins that cannot be gone through; None if all can.
+
+    `columns` are stretches that hold something else and need not be read.
+    """
     length = path.stat().st_size
     with path.open("rb") as file:
-        for place in _collections(path):
-            file.seek(place)
-            _, size = HEAD.unpack(file.read(HEAD.size).ljust(HEAD.size, b"\0"))
-            if not SMALLEST <= size <= length - place or not _sound(file.read(size - HEAD.size)):
-                return place
+        for start, end in between(columns, length):
+            for place in _collections(file, start, end):
+                file.seek(place)
+                _, size = HEAD.unpack(file.read(HEAD.size).ljust(HEAD.size, b"\0"))
+                if not SMALLEST <= size <= length - place or not _sound(file.read(size - HEAD.size)):
+                    return place
     return None
 
 
-def _collections(path: Path) -> list[int]:
-    """Where collections begin. No text and no other part holds the signature with its zeros."""
+def between(stretches: Iterable[Stretch], length: int) -> Iterator[Stretch]:
+    """What lies between stretches of a file of `length` bytes."""
+    at = 0
+    for start, end in sorted(stretches):
+        if start > at:
+            yield at, min(start, length)
+        at = max(at, end)
+    if at < length:
+        yield at, length
+
+
+def _collections(file: BinaryIO, start: int, end: int) -> list[int]:
+    """Where collections begin in a stretch. No text and no other part holds the signature with its zeros."""
     found = []
-    with path.open("rb") as file:
-        start, kept = 0, b""
-        while data := file.read(READ_BYTES):
-            joined = kept + data
-            at = joined.find(SIGNATURE)
-            while at >= 0:
-                found.append(start - len(kept) + at)
-                at = joined.find(SIGNATURE, at + 1)
-            kept = joined[-len(SIGNATURE) + 1 :]
-            start += len(data)
+    file.seek(start)
+    kept = b""
+    while data := file.read(min(READ_BYTES, end - start)):
+        joined = kept + data
+        at = joined.find(SIGNATURE)
+        while at >= 0:
+            found.append(start - len(kept) + at)
+            at = joined.find(SIGNATURE, at + 1)
+        kept = joined[-len(SIGNATURE) + 1 :]
+        start += len(data)
     return found
 
 

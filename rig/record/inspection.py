@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from pathlib import Path
 
 import h5py
@@ -20,9 +21,7 @@ def inspect(file: h5py.File, path: Path) -> None:
     To be called before any text or attribute of the file is read.
     """
     size = path.stat().st_size
-    place = damaged_heap(path)
-    if place is not None:
-        raise Damaged(f"{path}: the texts kept from byte {place} on are damaged")
+    columns: list[tuple[int, int]] = []
     seen: set[int] = set()
 
     def look(group: h5py.Group) -> None:
@@ -43,9 +42,13 @@ def inspect(file: h5py.File, path: Path) -> None:
                 raise Damaged(f"{path}: {item.name} keeps its data in another file")
             if item.size and item.size * item.dtype.itemsize > MOST_EXPANSION * size + 2**20:
                 raise Damaged(f"{path}: {item.name} claims {item.size} values, more than the file can hold")
+            columns.extend(_chunks(item))
 
     seen.add(h5py.h5o.get_info(file.id).addr)
     look(file)
+    place = damaged_heap(path, columns)
+    if place is not None:
+        raise Damaged(f"{path}: the texts kept from byte {place} on are damaged")
     if "board" not in file["streams"]:
         raise Damaged(f"{path} has no stream of the board")
     for stream in file["streams"].values():
@@ -55,3 +58,16 @@ def inspect(file: h5py.File, path: Path) -> None:
                 raise Damaged(
                     f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
                 )
+
+
+def _chunks(data: h5py.Dataset) -> list[tuple[int, int]]:
+    """Where the values of a compressed dataset stand in the file; nothing for others."""
+    found: list[tuple[int, int]] = []
+    if data.chunks is not None:
+        with contextlib.suppress(
+            OSError, RuntimeError, AttributeError
+        ):  # an old h5py, or damage: all is looked at
+            data.id.chunk_iter(
+                lambda chunk: found.append((chunk.byte_offset, chunk.byte_offset + chunk.size))
+            )
+    return found

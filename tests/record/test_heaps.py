@@ -5,12 +5,14 @@ from __future__ import annotations
 import struct
 import subprocess
 import sys
+import zlib
 from pathlib import Path
 
+import h5py
 import pytest
 from small_journal import write
 
-from rig.record import heaps
+from rig.record import heaps, inspection
 from rig.record.amendment import write_results
 from rig.record.errors import Damaged
 from rig.record.heaps import damaged_heap
@@ -86,11 +88,30 @@ def test_collections_of_absurd_size(session: Path, size: int) -> None:
 def test_a_signature_across_two_readings_is_found(session: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     data = session.read_bytes()
     places = collections(data)
-    for cut in range(1, 10):
-        monkeypatch.setattr(heaps, "READ_BYTES", places[1] + cut)
-        assert heaps._collections(session) == places
-    monkeypatch.setattr(heaps, "READ_BYTES", 5)
-    assert heaps._collections(session) == places
+    with session.open("rb") as file:
+        for size in (5, *range(places[1] + 1, places[1] + 10)):
+            monkeypatch.setattr(heaps, "READ_BYTES", size)
+            assert heaps._collections(file, 0, len(data)) == places
+            assert heaps._collections(file, places[0] + 1, places[-1] + 7) == places[1:-1]
+            assert heaps._collections(file, places[0], places[-1] + 8) == places
+
+
+def test_only_what_lies_between_columns_is_read() -> None:
+    assert list(heaps.between([], 10)) == [(0, 10)]
+    assert list(heaps.between([(0, 3), (3, 5), (8, 20)], 10)) == [(5, 8)]
+    assert list(heaps.between([(6, 7), (2, 9), (4, 5)], 10)) == [(0, 2), (9, 10)]
+    assert list(heaps.between([(0, 10)], 10)) == []
+
+
+def test_columns_hold_no_collection(session: Path) -> None:
+    """What is left out of the search in a session is what is compressed, and nothing else."""
+    with h5py.File(session) as file:
+        stretches = [one for data in file["streams/board"].values() for one in inspection._chunks(data)]
+        assert len(stretches) == len(file["streams/board"]) and inspection._chunks(file["events/tick"]) == []
+    data = session.read_bytes()
+    for start, end in stretches:
+        zlib.decompress(data[start:end])
+        assert not any(start <= place < end for place in collections(data))
 
 
 def test_amended_again_and_again_it_stays_sound_and_small(session: Path) -> None:
