@@ -58,6 +58,17 @@ def inspect(file: h5py.File, path: Path) -> None:
                 raise Damaged(
                     f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
                 )
+    for sampler in file.get("samplers", {}).values():
+        lengths = set()
+        for name, data in sampler.items():
+            wanted = "u8" if name in ("arrival_tick", "device_tick") else "f8"
+            if data.ndim != 1 or data.dtype != np.dtype(wanted):
+                raise Damaged(
+                    f"{path}: {data.name} is {data.dtype} {data.shape}, expected {wanted} in one row"
+                )
+            lengths.add(data.shape)
+        if len(lengths) != 1 or "time_s" not in sampler:
+            raise Damaged(f"{path}: {sampler.name} has no times, or columns of different length")
 
 
 def _chunks(data: h5py.Dataset) -> list[tuple[int, int]]:

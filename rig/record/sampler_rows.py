@@ -53,28 +53,40 @@ def fill(
     book.column(f"{place}/time_s", (count,), "f8", [since])
     if rows.device_tick:
         book.column(f"{place}/device_tick", (count,), "u8", [np.array(rows.device_tick, dtype=np.uint64)])
-    values = np.array(rows.rows, dtype=np.float64).reshape(count, -1)
-    columns = told.get("columns", [])
-    for index in range(values.shape[1]):
-        column = columns[index] if index < len(columns) else {}
-        name = str(column.get("name", ""))
-        if not name.isidentifier() or name in TAKEN:
-            name = f"column{index}"
+    width = len(rows.rows[0]) if rows.rows else 0
+    values = np.array(rows.rows, dtype=np.float64).reshape(count, width)
+    for index, (name, column) in enumerate(_described(told, width)):
         book.column(f"{place}/{name}", (count,), "f8", [values[:, index]])
         book.attribute_set(
             f"{place}/{name}",
             {
                 "measures": str(column.get("measures", "other")),
                 "unit": str(column.get("unit", "1")),
-                "scale": float(column.get("scale", 1.0)),
-                "offset": float(column.get("offset", 0.0)),
+                "scale": _number(column, "scale", 1.0),
+                "offset": _number(column, "offset", 0.0),
             },
         )
+    limits = told.get("limits", [])
     book.attribute_set(
         place,
         {
-            "limits": "; ".join(str(limit) for limit in told.get("limits", [])),
+            "limits": "; ".join(map(str, limits)) if isinstance(limits, list | tuple) else "",
             "damaged_lines": rows.damaged,
-            "tick_hz": float(told.get("tick_hz", 0.0)),
+            "tick_hz": _number(told, "tick_hz", 0.0),
         },
     )
+
+
+def _described(told: dict[str, Any], width: int) -> list[tuple[str, dict[str, Any]]]:
+    """Name and description of each column; of a header that does not fit the rows nothing is taken."""
+    columns = told.get("columns")
+    if isinstance(columns, list) and len(columns) == width and all(isinstance(one, dict) for one in columns):
+        names = [str(one.get("name", "")) for one in columns]
+        if len(set(names)) == width and all(name.isidentifier() and name not in TAKEN for name in names):
+            return list(zip(names, columns, strict=True))
+    return [(f"column{index}", {}) for index in range(width)]
+
+
+def _number(fields: dict[str, Any], name: str, default: float) -> float:
+    value = fields.get(name, default)
+    return float(value) if isinstance(value, int | float) and abs(value) <= 1e300 else default

@@ -165,9 +165,9 @@ def _fill_board(file: h5py.File, book: digests.DigestingFile, recording: Recordi
 
 def _fill_samplers(book: digests.DigestingFile, recording: Recording) -> None:
     first = int(recording.pieces[0].tick[0]) if recording.pieces else 0
-    told = {
-        str(one.get("name")): one for one in recording.header.get("samplers", []) if isinstance(one, dict)
-    }
+    described = recording.header.get("samplers")
+    listed = described if isinstance(described, list) else []
+    told = {str(one.get("name")): one for one in listed if isinstance(one, dict)}
     for name, rows in recording.samplers.items():
         place, tick_hz = f"/samplers/{name}", int(recording.header["tick_hz"])
         sampler_rows.fill(book, place, rows, told.get(name, {}), first, tick_hz)
