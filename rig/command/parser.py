@@ -16,7 +16,7 @@ COMMANDS = {
     "run": "carry out a protocol on a rig and analyse it while it runs",
     "check": "read a rig file, and a protocol, and tell every mistake; dry run before power",
     "analyse": "estimate everything again from the raw rows of a session",
-    "replay": "a session once more as it ran, and whether it comes to the same",
+    "replay": "play a session once more as it ran, and tell whether it comes to the same",
     "verify": "prove that a session is what was recorded, and that its results follow from it",
     "report": "write the report of a session",
     "recover": "seal the journal of a run that was cut off",
