@@ -68,8 +68,8 @@ class Checker(QObject):
         process = QProcess(self)
         process.setStandardErrorFile(QProcess.nullDevice())
         process.readyReadStandardOutput.connect(self._hear)
-        process.finished.connect(lambda: self._gone(process))
-        process.errorOccurred.connect(lambda error: self._broken(process, error))
+        process.finished.connect(self._gone)
+        process.errorOccurred.connect(self._broken)
         self._process = process
         process.start(sys.executable, ["-m", "rig.desk.check_process"])
 
@@ -130,14 +130,14 @@ class Checker(QObject):
         else:
             self._start()
 
-    def _gone(self, process: QProcess) -> None:
-        if process is not self._process:  # it was ended on purpose
+    def _gone(self) -> None:
+        if self.sender() is not self._process:  # it was ended on purpose
             return
         self._end()
         self._give_up("The check has broken off: change something to have it made again.")
 
-    def _broken(self, process: QProcess, error: QProcess.ProcessError) -> None:
-        if process is self._process and error is QProcess.ProcessError.FailedToStart:
+    def _broken(self, error: QProcess.ProcessError) -> None:
+        if self.sender() is self._process and error is QProcess.ProcessError.FailedToStart:
             self._end()
             self._give_up("The check cannot be started: the installation is not whole.")
 

@@ -59,6 +59,8 @@ def session_problem(path: Path) -> str:
     """What is wrong with a path for a new session; "" if nothing is."""
     if path.suffix.lower() not in ENDINGS or path.name.lower() in ENDINGS:
         return "The session needs a file name that ends in .h5."
+    if not path.name.isprintable():
+        return "The session cannot have this name: it holds a letter that cannot be shown."
     try:
         if not path.parent.is_dir():
             return f"The folder of the session is not there: {path.parent}"

@@ -63,7 +63,7 @@ class CautionsPanel(QWidget):
         by.addWidget(self.name, 1)
         column = QVBoxLayout(self)
         column.setContentsMargins(0, 0, 0, 0)
-        column.setSpacing(4)
+        column.setSpacing(6)
         column.addLayout(head)
         column.addWidget(self.list, 1)
         column.addWidget(self.told)

@@ -22,8 +22,8 @@ from rig.desk.widgets.shapes import ElidedLabel
 from rig.desk.widgets.style import set_kind, set_shown
 from rig.desk.widgets.text_editor import TextEditor, unfit
 
-#: Three of them and a list to choose from stand in a row of half a small window.
-COMPACT = "padding: 0.15em 0.5em; min-height: 1.45em;"
+#: Three of them stand beside a few words in a third of a small window.
+COMPACT = "padding: 0.05em 0.5em; min-height: 1.35em;"
 FILTER = "Files in TOML (*.toml);;All files (*)"
 
 
@@ -84,17 +84,19 @@ class FilePane(QWidget):
         return button
 
     def _arrange(self) -> None:
-        row = QHBoxLayout()
-        row.setSpacing(6)
-        row.addWidget(self.label)
-        row.addWidget(self.chooser, 1)
+        which, kept = QHBoxLayout(), QHBoxLayout()
+        which.setSpacing(8)
+        which.addWidget(self.label)
+        which.addWidget(self.chooser, 1)
+        kept.setSpacing(6)
+        kept.addWidget(self.state, 1)
         for button in (self.open_button, self.save_button, self.save_as_button):
-            row.addWidget(button)
+            kept.addWidget(button)
         column = QVBoxLayout(self)
         column.setContentsMargins(0, 0, 0, 0)
-        column.setSpacing(4)
-        column.addLayout(row)
-        column.addWidget(self.state)
+        column.setSpacing(5)
+        column.addLayout(which)
+        column.addLayout(kept)
         column.addWidget(self.question)
         column.addWidget(self.editor, 1)
         QWidget.setTabOrder(self.chooser, self.open_button)
@@ -187,7 +189,7 @@ class FilePane(QWidget):
     def show_state(self) -> None:
         """Whether it is as on disk, in words."""
         if self.file.edited:
-            words = "edited, not saved" + (": save it under another name" if self.file.shipped else "")
+            words = "edited, not saved"
         elif self.file.shipped:
             words = "comes with Haltere"
         else:

@@ -30,6 +30,12 @@ COLUMNS = (
     ("decay ±\n1/s", "half-width of the 95 % interval of the decay rate, at best"),
 )
 UNKNOWN = "–"
+#: All columns are to be seen in half of a small window.
+NARROW = (
+    "QHeaderView { background: transparent; }"
+    " QHeaderView::section, QTableView::item { padding: 0.1em 0.3em; }"
+    " QTableCornerButton::section, QAbstractScrollArea::corner { background: transparent; border: none; }"
+)
 
 
 def cells(level: LevelForecast) -> tuple[str, ...]:
@@ -78,8 +84,8 @@ class ForecastView(QWidget):
         row = QHBoxLayout(self)
         row.setContentsMargins(0, 0, 0, 0)
         row.setSpacing(14)
-        row.addWidget(self.table, 2)
-        row.addWidget(self.area, 1)
+        row.addWidget(self.table, 9)
+        row.addWidget(self.area, 4)
 
     def words(self) -> list[str]:
         """The sentences shown."""
@@ -103,6 +109,7 @@ class _Table(QTableWidget):
     def __init__(self) -> None:
         super().__init__(0, len(COLUMNS))
         self.setAccessibleName("dry run, a row a level")
+        self.setStyleSheet(NARROW)
         self.setEditTriggers(QAbstractItemView.EditTrigger.NoEditTriggers)
         self.setSelectionBehavior(QAbstractItemView.SelectionBehavior.SelectRows)
         self.setTabKeyNavigation(False)
@@ -131,6 +138,8 @@ class _Table(QTableWidget):
     def _fit(self) -> None:
         self.resizeColumnsToContents()
         self.verticalHeader().setDefaultSectionSize(round(1.5 * self.fontMetrics().height()))
+        scroll = self.verticalScrollBar().sizeHint().width()
+        self.setMaximumWidth(self.horizontalHeader().length() + scroll + 2 * self.frameWidth() + 4)
 
     def keyPressEvent(self, event: QKeyEvent) -> None:
         if event.matches(QKeySequence.StandardKey.Copy):

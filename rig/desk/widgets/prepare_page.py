@@ -11,7 +11,6 @@ be armed. What is armed is the text as it stands here, kept in a file or not.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import replace
 from pathlib import Path
 
 from PySide6.QtCore import QEvent, Qt, QTimer, Signal
@@ -53,7 +52,7 @@ RIGHT_EM = 25
 
 
 class PreparePage(QWidget):
-    """`armed(Job)` when the run is to begin, `back` to leave. Clocks and ports are injected for tests."""
+    """`armed(Job)` when the run is to begin, `back` to leave. Clocks, ports and checks are injected for tests."""
 
     armed = Signal(object)
     back = Signal()
@@ -68,6 +67,7 @@ class PreparePage(QWidget):
         ports: Callable[[], Sequence[Port]] = serial_ports,
         now_s: Callable[[], float] = utc_s,
         now_text: Callable[[], str] = utc_text,
+        checker: Checker | None = None,
     ) -> None:
         super().__init__(parent)
         self.memory = memory if memory is not None else Memory()
@@ -78,7 +78,7 @@ class PreparePage(QWidget):
         rig, rig_lost = opened(self.memory.rig, FIRST_RIG)
         protocol, protocol_lost = opened(self.memory.protocol, FIRST_PROTOCOL)
         self.prepared = Prepared(rig, protocol, session_folder(self.memory.folder))
-        self.checker = Checker(self)
+        self.checker = checker if checker is not None else Checker(self)
         self.rig_pane = FilePane(theme, RIG, "&Rig file", rig, self.memory)
         self.protocol_pane = FilePane(theme, PROTOCOL, "&Protocol", protocol, self.memory)
         self.results = CheckResults(theme)
@@ -105,7 +105,6 @@ class PreparePage(QWidget):
         self._look = QTimer(self)
         self._look.setInterval(LOOK_MS)
         self._connect()
-        self.place.folder = self.prepared.folder
         self.cautions.name.setText(self.memory.operator)
         self.set_theme(theme)
         self._say_state("ring", "not checked yet")
@@ -166,7 +165,8 @@ class PreparePage(QWidget):
         self.checker.done.connect(self._checked)
         self.checker.failed.connect(self._not_checked)
         self.results.chosen.connect(self._go_to)
-        self.place.changed.connect(self._place_changed)
+        self.place.changed.connect(self.refresh)
+        self.place.folder_chosen.connect(self._folder_chosen)
         self.cautions.acknowledged.connect(self._acknowledged)
         self.cautions.withdrawn.connect(self._withdrawn)
         self.arm.although_changed.connect(self.refresh)
@@ -237,9 +237,9 @@ class PreparePage(QWidget):
         """Tell again who has acknowledged, and what is missing."""
         prepared, place = self.prepared, self.place
         prepared.by_port, prepared.port = place.by_port, place.port
-        prepared.folder, prepared.session_typed = place.folder, place.session_typed
+        prepared.folder, prepared.session_typed = session_folder(self.memory.folder), place.session_typed
         if prepared.checked is not None:
-            place.show_session(prepared.default_session(self._now_text()))
+            place.show_session(prepared.folder, prepared.default_session(self._now_text()))
         self.cautions.show_state(
             powered=prepared.powered, rig_known=bool(prepared.rig_sha256), held=self._held()
         )
@@ -256,7 +256,8 @@ class PreparePage(QWidget):
     def _held(self) -> Acknowledgement | None:
         return self._acknowledgements.holding(self.prepared.rig_sha256, self._now_s())
 
-    def _place_changed(self) -> None:
+    def _folder_chosen(self, folder: str) -> None:
+        self.memory.folder = folder
         self.refresh()
 
     def _acknowledged(self, name: str) -> None:
@@ -300,20 +301,14 @@ class PreparePage(QWidget):
 
     def simulated_job(self) -> Job:
         """A short run on the simulated boom, as shipped: it needs no preparation."""
-        simulated = Prepared(
-            WrittenFile.open(FIRST_RIG), WrittenFile.open(FIRST_PROTOCOL), self.prepared.folder
-        )
+        folder = session_folder(self.memory.folder)
+        simulated = Prepared(WrittenFile.open(FIRST_RIG), WrittenFile.open(FIRST_PROTOCOL), folder)
         return simulated.job(
             self._now_text(),
             self._now_s(),
             software=_software(),
             state_folder=str(self._state_folder or ""),
         )
-
-    @staticmethod
-    def with_ring(job: Job, ring: Path) -> Job:
-        """The job with the ring its window reads."""
-        return replace(job, ring=str(ring))
 
     def checked_of(self, job: Job) -> Checked:
         """Rig, protocol and dry run of a job; checked now if it is not the one prepared here."""
@@ -343,6 +338,7 @@ class PreparePage(QWidget):
             self.check_now()
         else:
             self.refresh()
+        self.rig_pane.chooser.setFocus(Qt.FocusReason.OtherFocusReason)
         for pane in (self.rig_pane, self.protocol_pane):
             pane.look_at_disk()
 

@@ -39,9 +39,10 @@ def as_written(rig: RigDescription | None) -> str:
 
 
 class RunPlace(QWidget):
-    """`changed` when somebody has chosen another place or another session."""
+    """`changed` when somebody has chosen another place or session, `folder_chosen(path)` another folder."""
 
     changed = Signal()
+    folder_chosen = Signal(str)
 
     def __init__(
         self,
@@ -146,8 +147,9 @@ class RunPlace(QWidget):
 
     # -- session ---------------------------------------------------------------------------------------
 
-    def show_session(self, made: str) -> None:
-        """The name a session gets unless somebody types another."""
+    def show_session(self, folder: Path, made: str) -> None:
+        """The folder, and the name a session gets unless somebody types another."""
+        self.folder = folder
         if not self.session_typed and self.session.text() != made and not self._emptied():
             self.session.setText(made)
             self.session.setCursorPosition(0)
@@ -173,12 +175,8 @@ class RunPlace(QWidget):
         dialog.setAttribute(Qt.WidgetAttribute.WA_DeleteOnClose)
         dialog.setFileMode(QFileDialog.FileMode.Directory)
         dialog.setOption(QFileDialog.Option.ShowDirsOnly)
-        dialog.fileSelected.connect(lambda name: self.set_folder(Path(name)))
+        dialog.fileSelected.connect(self.folder_chosen)
         dialog.open()
-
-    def set_folder(self, folder: Path) -> None:
-        self.folder = folder
-        self.changed.emit()
 
     def set_theme(self, theme: Theme) -> None:
         """The style sheet of the window colours it."""

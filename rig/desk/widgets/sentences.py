@@ -38,7 +38,7 @@ class Sentences(QWidget):
         self._lines = list(lines)
         for row, _ in self._rows:
             self._column.removeWidget(row)
-            row.setParent(None)
+            row.hide()  # not without a parent: its layout may still be about to show it, as a window then
             row.deleteLater()
         self._rows = [self._row(*line) for line in lines]
         for row, _ in self._rows:

@@ -259,7 +259,7 @@ class TextEditor(QWidget):
     def set_text(self, text: str) -> None:
         """Show another text; what was undone cannot be redone. Not told by `changed`."""
         self._loading = True
-        self.colours.on = len(text) <= LARGEST_COLOURED
+        self.colours.switch(len(text) <= LARGEST_COLOURED)
         self.text.marks = {}
         self.text.setPlainText(text)
         self._loading = False

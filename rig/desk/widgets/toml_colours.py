@@ -16,12 +16,17 @@ QUOTES = {1: '"""', 2: "'''"}
 
 
 class TomlColours(QSyntaxHighlighter):
-    """Colours of one document; `on` is off for texts so large that colouring would hold up typing."""
+    """Colours of one document."""
 
     def __init__(self, theme: Theme, document: QTextDocument) -> None:
         super().__init__(document)
-        self.on = True
+        self._text_document = document
         self._formats = _formats(theme)
+
+    def switch(self, on: bool) -> None:
+        """Off for texts so large that colouring, or only being asked for it line by line, would take seconds."""
+        if on != (self.document() is not None):
+            self.setDocument(self._text_document if on else None)
 
     def set_theme(self, theme: Theme) -> None:
         self._formats = _formats(theme)
@@ -29,8 +34,6 @@ class TomlColours(QSyntaxHighlighter):
 
     def highlightBlock(self, text: str) -> None:
         self.setCurrentBlockState(0)
-        if not self.on:
-            return
         start = 0
         within = self.previousBlockState()
         if within in QUOTES:
