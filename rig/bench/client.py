@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import subprocess
 import sys
+import threading
 from contextlib import suppress
 from typing import Any
 
@@ -65,6 +66,13 @@ class BenchClient:
         if self.process.stdin is not None:
             with suppress(OSError):
                 self.process.stdin.close()
+        threading.Thread(target=self._reap, name="end of a bench process", daemon=True).start()
+
+    def _reap(self) -> None:
+        self.process.wait()
+        if self.process.stdout is not None:
+            self._reader.join()
+            self.process.stdout.close()
 
     def close(self, patience_s: float = 200.0) -> int:
         """Close the pipe and wait for the end: a run still on is halted, brought to standstill and sealed."""
@@ -78,6 +86,7 @@ class BenchClient:
             self.process.kill()  # the board's watchdog takes the drive away
             code = self.process.wait()
         if self.process.stdout is not None:
+            self._reader.join()
             self.process.stdout.close()
         return code
 

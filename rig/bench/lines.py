@@ -42,6 +42,10 @@ class LineReader:
         except queue.Empty:
             return None
 
+    def join(self, timeout_s: float = 5.0) -> None:
+        """Wait for the thread, once the other side has closed: only then may the descriptor be closed."""
+        self._thread.join(timeout_s)
+
     def _run(self) -> None:
         rest = b""
         while True:

@@ -289,7 +289,9 @@ def main() -> None:
         control.writer.send({"failed": {"exit_code": error.code, "reason": str(error)}})
     except Exception as error:
         # A mistake of ours: the drive is off by now (see Loop.run), and the rows are in the journal.
-        words = f"an error inside the bench process ({type(error).__name__}: {error}); what was written is kept"
+        words = (
+            f"an error inside the bench process ({type(error).__name__}: {error}); what was written is kept"
+        )
         control.writer.send({"failed": {"exit_code": code, "reason": words}})
     control.writer.close()
     # The reading thread still waits on the client's pipe.

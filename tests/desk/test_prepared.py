@@ -40,6 +40,16 @@ def test_shipped_files_are_told_apart_by_kind() -> None:
     assert kind_of("# haltere_rig = 1\n") == ""
 
 
+def test_a_shipped_name_is_the_shipped_file_whatever_lies_here(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    (tmp_path / "boom").write_text("# another\n", encoding="utf-8")
+    assert WrittenFile.open("boom").shipped
+    file = WrittenFile.open(str(tmp_path / "boom"))
+    assert not file.shipped and file.source == str(tmp_path / "boom")
+
+
 def test_a_shipped_file_is_never_written() -> None:
     file = WrittenFile.open("quick")
     before = file.path.read_bytes()

@@ -1,4 +1,4 @@
-"""The first page: three ways to go on, sessions of late, and nothing cut in a small window."""
+"""The first page: three ways to go on, recent sessions, and nothing cut in a small window."""
 
 from __future__ import annotations
 
@@ -57,7 +57,7 @@ def test_every_way_can_be_gone_by_keys(page: StartPage, qtbot: QtBot) -> None:
     assert heard[:2] == ["prepare", "replay"] and Path(heard[2]).name == "old.h5"
 
 
-def test_sessions_of_late_are_those_still_there(page: StartPage, memory: Memory, tmp_path: Path) -> None:
+def test_recent_sessions_are_those_still_there(page: StartPage, memory: Memory, tmp_path: Path) -> None:
     def names() -> list[str]:
         return [page.recent.item(row).text() for row in range(page.recent.count())]
 

@@ -169,11 +169,11 @@ class Prepared:
 
         `although`: the operator wants to run although limits would be crossed, which still trip.
         """
-        told = []
         checked = self.checked
         if checked is None:
-            told.append("The files are being checked.")
-        elif checked.problem_count:
+            return ["The files are being checked."]
+        told = []
+        if checked.problem_count:
             count = checked.problem_count
             told.append(f"{count} mistake{'s' if count > 1 else ''} in the files.")
         elif checked.crossings and not although:

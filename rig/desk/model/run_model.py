@@ -121,6 +121,7 @@ class RunModel:
         self.exit_code: int | None = None
         self.reason = ""
         self.session = ""
+        self.closed = False  # nothing more comes: the session is sealed, or will not be
         self.sounds: list[str] = []  # tap, accepted, double, lost, trip: taken away by whoever sounds them
 
     # -- reading ---------------------------------------------------------------------------------------
@@ -386,9 +387,11 @@ class RunModel:
 
     def _done(self, told: Fields) -> Changed:
         self.session = str(told.get("session", ""))
+        self.closed = True
         return self._stopped(told) | self._go("finished")
 
     def _failed(self, told: Fields) -> Changed:
+        self.closed = True
         return self._stopped(told) | self._go(
             "failed" if not self.rungs and self.origin_tick is None else "finished"
         )

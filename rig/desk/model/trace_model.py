@@ -7,7 +7,7 @@ minute. They begin at multiples of their length on the board's clock: a picture 
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Protocol
+from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,7 +32,9 @@ from rig.desk.model.signals import (
     trace_of_raw,
 )
 from rig.record.errors import Damaged
-from rig.session import Stream
+
+if TYPE_CHECKING:
+    from rig.session import Stream
 
 Values = NDArray[np.float64]
 

@@ -72,8 +72,9 @@ class WrittenFile:
 
     @classmethod
     def open(cls, name_or_path: str | Path) -> WrittenFile:
-        """Open a path, or else the shipped file of that name. NotOpened with the reason."""
-        path = find(name_or_path)
+        """Open the shipped file of that name, or else a path. NotOpened with the reason."""
+        shipped = name_or_path in shipped_files()  # also where a file here has the same name
+        path = shipped_folder() / f"{name_or_path}.toml" if shipped else find(name_or_path)
         try:
             text = read_text(path)
         except FileProblems as error:

@@ -7,7 +7,7 @@ import pyqtgraph as pg
 from numpy.typing import NDArray
 from PySide6.QtCore import Qt
 from PySide6.QtGui import QFont, QFontMetricsF
-from PySide6.QtWidgets import QGraphicsItem, QWidget
+from PySide6.QtWidgets import QGraphicsItem, QGraphicsPathItem, QWidget
 
 from rig.desk.model.ranges import ticks
 from rig.desk.theme import Theme
@@ -82,6 +82,7 @@ class Chart:
         """The part seen. Ticks of x are given, as several charts share them; those of y follow from the height."""
         if x is not None or y is not None:
             self.view.setRange(xRange=x, yRange=y, padding=0.0, update=True, disableAutoRange=False)
+            self.view.updateMatrix()  # left to the next painting, it would ask for one more after that
         if y is not None:
             self._number_y()
             self.left.update()
@@ -115,6 +116,24 @@ class Chart:
     def _resized(self) -> None:
         if not self._empty:
             self._number_y()
+
+
+class Band(QGraphicsPathItem):
+    """The area between least and greatest values over x; `x_drawn`, `low`, `high` are those drawn, shape (n,)."""
+
+    def __init__(self, z: float = -1.0) -> None:
+        super().__init__()
+        self.setPen(Qt.PenStyle.NoPen)
+        self.setZValue(z)
+        self.x_drawn = self.low = self.high = np.empty(0)
+
+    def draw(self, x: Values, low: Values, high: Values) -> None:
+        self.x_drawn, self.low, self.high = x, low, high
+        along, around = np.concatenate((x, x[::-1])), np.concatenate((low, high[::-1]))
+        self.setPath(pg.arrayToQPath(along, around, connect="all", finiteCheck=False))
+
+    def clear(self) -> None:
+        self.draw(np.empty(0), np.empty(0), np.empty(0))
 
 
 def draw(curve: pg.PlotCurveItem, x: Values, y: Values, broken: NDArray[np.bool_] | None = None) -> None:

@@ -15,7 +15,7 @@ from rig.desk.widgets.shapes import SHAPES, draw_shape
 
 #: Dashes and gaps of lines that are told apart by them, in widths.
 DASHES = {"dash": (5.0, 3.0), "dots": (1.5, 2.5), "dash_dot": (6.0, 2.5, 1.5, 2.5)}
-BAND_SHARE, THICK_SHARE = 0.16, 0.5
+BAND_SHARE, THICK_SHARE = 0.16, 0.42
 
 
 @dataclass(frozen=True)

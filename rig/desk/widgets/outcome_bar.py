@@ -48,6 +48,8 @@ class OutcomeBar(QWidget):
         kept = bool(model.session)
         if model.phase == "failed":
             words = f"Not started: {model.reason}."
+        elif model.closed and not kept:
+            words = f"Ended early: {model.reason}."
         elif not kept and model.exit_code == 0:
             words = "Finished. The session is being worked out and sealed …"
         else:
@@ -59,6 +61,7 @@ class OutcomeBar(QWidget):
         self.text.setText(words)
         self.report_button.setEnabled(kept)
         self.replay_button.setEnabled(kept)
+        self.again_button.setEnabled(model.closed)
 
     def set_busy(self, words: str) -> None:
         """A report is being written ("": no more)."""

@@ -61,11 +61,11 @@ class StartPage(QWidget):
         self.replay_button = QPushButton("Rep&lay a session …")
         self.replay_button.setAccessibleDescription("watch a stored session again")
         self.marks = [ShapeMark(theme) for _ in CAUTIONS]
-        self.recent_label = QLabel("&Lately")
+        self.recent_label = QLabel("Re&cent sessions")
         set_kind(self.recent_label, "heading")
         self.recent = QListWidget()
         self.recent_label.setBuddy(self.recent)
-        self.recent.setAccessibleName("sessions of late")
+        self.recent.setAccessibleName("recent sessions")
         self.recent.setAccessibleDescription("Enter replays the session")
         self.recent.setTextElideMode(Qt.TextElideMode.ElideMiddle)
         self.recent.setHorizontalScrollBarPolicy(Qt.ScrollBarPolicy.ScrollBarAlwaysOff)
@@ -127,7 +127,7 @@ class StartPage(QWidget):
     # -- recent sessions -------------------------------------------------------------------------------
 
     def show_recent(self) -> None:
-        """The sessions of late that are still there."""
+        """The recent sessions that are still there."""
         self.recent.clear()
         for name in self._memory.recent:
             path = Path(name)

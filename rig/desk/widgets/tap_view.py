@@ -8,7 +8,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import pyqtgraph as pg
 from PySide6.QtCore import QRectF, Qt, Signal
 from PySide6.QtGui import QFontMetricsF, QKeyEvent
 from PySide6.QtWidgets import QGraphicsRectItem, QGridLayout, QLabel, QToolButton, QWidget
@@ -18,7 +17,7 @@ from rig.desk.model.run_model import RunModel
 from rig.desk.model.tap_model import TapCurves, TapPage, tap_numbers, tap_page
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import Caption, dashed, pen, wash
-from rig.desk.widgets.charts import Canvas, Chart, draw
+from rig.desk.widgets.charts import Band, Canvas, Chart, draw
 from rig.desk.widgets.legend import BAND_SHARE, DASHES, THICK_SHARE, Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
 from rig.desk.widgets.shapes import ElidedLabel, ShapeMark, sized
@@ -89,8 +88,7 @@ class TapView(SavablePlot):
             patch.setZValue(-50.0)
             patch.setPen(Qt.PenStyle.NoPen)
             chart.add(patch)
-        self.low, self.high = self.above.curve(), self.above.curve()
-        self.rows = pg.FillBetweenItem(self.low, self.high)
+        self.rows = Band()
         self.above.add(self.rows)
         self.mean, self.fit = self.above.curve(1.0, smooth=True), self.above.curve(2.0, smooth=True)
         self.residual = self.below.curve(0.0)
@@ -190,7 +188,8 @@ class TapView(SavablePlot):
     def _draw(self, curves: TapCurves | None) -> None:
         self._drawn = curves
         if curves is None or not len(curves.time_s):
-            for curve in (self.low, self.high, self.mean, self.fit, self.residual):
+            self.rows.clear()
+            for curve in (self.mean, self.fit, self.residual):
                 curve.setData([], [])
             for patch in self.used:
                 patch.setRect(QRectF())
@@ -198,8 +197,7 @@ class TapView(SavablePlot):
                 chart.set_empty()
             self._show_key(curves)
             return
-        draw(self.low, curves.time_s, curves.low_deg)
-        draw(self.high, curves.time_s, curves.high_deg)
+        self.rows.draw(curves.time_s, curves.low_deg, curves.high_deg)
         draw(self.mean, curves.mean_time_s, curves.mean_deg)
         draw(self.fit, curves.model_time_s, curves.model_deg)
         draw(self.residual, curves.model_time_s, curves.residual_deg)
@@ -242,8 +240,6 @@ class TapView(SavablePlot):
         theme, font = self.theme, self.font()
         metrics = QFontMetricsF(font)
         self.title.setFont(sized(font, 1.0, bold=True))
-        for edge in (self.low, self.high):
-            edge.setPen(None)
         self.rows.setBrush(wash(theme.trace, THICK_SHARE))
         self.mean.setPen(pen(theme.mean, MEAN_WIDTH))
         self.fit.setPen(dashed(theme.fit, DASHES["dash"], MODEL_WIDTH))

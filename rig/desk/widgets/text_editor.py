@@ -208,6 +208,7 @@ class TextEditor(QWidget):
         super().__init__(parent)
         self._zoom = 1.0
         self._loading = False
+        self._seen = ""
         self.text = NumberedText(theme)
         self.colours = TomlColours(theme, self.text.document())
         self.find_field = QLineEdit()
@@ -263,6 +264,7 @@ class TextEditor(QWidget):
         self.text.marks = {}
         self.text.setPlainText(text)
         self._loading = False
+        self._seen = self.plain_text()
         self._tint()
         self.text.fit_margin()
 
@@ -271,8 +273,15 @@ class TextEditor(QWidget):
         return self.text.document().toRawText().replace("\u2029", "\n")
 
     def _edited(self) -> None:
-        if not self._loading:
-            self.changed.emit()
+        if self._loading:
+            return
+        if self.text.document().characterCount() > LARGEST_COLOURED:
+            self.colours.switch(False)
+        else:  # colouring a text counts as a change of it, which is none to be told
+            before, self._seen = self._seen, self.plain_text()
+            if self._seen == before:
+                return
+        self.changed.emit()
 
     # -- mistakes --------------------------------------------------------------------------------------
 

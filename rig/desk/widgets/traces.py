@@ -9,7 +9,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import pyqtgraph as pg
 from PySide6.QtCore import QElapsedTimer, QPoint, QPointF, Qt, Signal
 from PySide6.QtGui import QAction, QFontMetricsF
 from PySide6.QtWidgets import QButtonGroup, QMenu, QToolButton, QWidget
@@ -21,8 +20,8 @@ from rig.desk.model.signals import BODY, UNITS, Trace, Traces
 from rig.desk.model.trace_model import TraceSource
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import pen, wash
-from rig.desk.widgets.charts import Canvas, Chart, draw, zigzag
-from rig.desk.widgets.legend import BAND_SHARE, Entry, Legend
+from rig.desk.widgets.charts import Band, Canvas, Chart, draw, zigzag
+from rig.desk.widgets.legend import THICK_SHARE, Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
 
 #: Spans to choose from, s; the last choice is folded on the crank phase.
@@ -56,18 +55,14 @@ class SignalChart(Chart):
         self.range = CalmRange(LEAST[measures])
         self.course = self.curve(0.0)
         self.mean = self.curve(2.0)
-        self.upper, self.lower = self.curve(), self.curve()
-        self.band = pg.FillBetweenItem(self.upper, self.lower)
-        self.band.setZValue(-1.0)
+        self.band = Band()
         self.add(self.band)
         self.held = False  # its range stays as it is
 
     def set_theme(self, theme: Theme) -> None:
         self.course.setPen(pen(theme.trace))
         self.mean.setPen(pen(theme.mean))
-        for edge in (self.upper, self.lower):
-            edge.setPen(None)
-        self.band.setBrush(wash(theme.trace, BAND_SHARE))
+        self.band.setBrush(wash(theme.trace, THICK_SHARE))
 
     def show_old(self, theme: Theme, old: bool) -> None:
         """A picture that is not of now is pale."""
@@ -83,8 +78,7 @@ class SignalChart(Chart):
             draw(self.mean, mean.time_s, mean.low, mean.broken)
 
     def draw_folded(self, folded: FoldedSignal) -> None:
-        draw(self.upper, folded.phase_deg, folded.high)
-        draw(self.lower, folded.phase_deg, folded.low)
+        self.band.draw(folded.phase_deg, folded.low, folded.high)
         draw(self.course, folded.last_phase_deg, folded.last)
         draw(self.mean, folded.phase_deg, folded.mean)
         self._show_band(True)
@@ -118,7 +112,7 @@ class TracesView(SavablePlot):
         self.shown: tuple[str, ...] = FIRST
         self.charts: dict[str, SignalChart] = {}
         self._drawn: Traces | Folded | None = None
-        self._newest: int | None = None
+        self.newest: int | None = None  # of the rows drawn
         self._old = self._ended = False
         self._since = QElapsedTimer()
         self._since.start()
@@ -155,7 +149,7 @@ class TracesView(SavablePlot):
     def set_source(self, source: TraceSource | None) -> None:
         """Signals from somewhere else, or from nowhere."""
         self.source = source
-        self._newest, self._drawn = None, None
+        self.newest, self._drawn = None, None
         if source is not None:
             kept = tuple(measures for measures in FIRST if measures in source.signals)
             self.shown = kept or source.signals[:4]
@@ -176,7 +170,7 @@ class TracesView(SavablePlot):
         for chart in self.charts.values():
             chart.range.forget()
             chart.clear()
-        self._newest = None
+        self.newest = None
         self._name_axis()
         self.tick()
         self.span_chosen.emit(span_s)
@@ -199,16 +193,17 @@ class TracesView(SavablePlot):
         if found is None:
             self._tell({"waiting": "waiting for rows", "stored": ""}.get(source.state, source.state))
             return
-        if found.newest == self._newest:
+        if found.newest == self.newest:
             self._no_news(source.state)
             return
-        self._newest = found.newest
+        self.newest = found.newest
         self._since.restart()
         self._tell("")
         if self.folded:
             self._draw_folded(source)
         else:
             self._draw_courses(found)
+        self._show_key()
 
     def _draw_courses(self, found: Traces) -> None:
         self._drawn = found
@@ -262,15 +257,16 @@ class TracesView(SavablePlot):
                 chart.show_old(self.theme, old)
         for chart in self.charts.values():
             chart.words.say(words)
-        self._ended = ended
-        self._show_key()
+        if ended != self._ended:
+            self._ended = ended
+            self._show_key()
         self.setAccessibleDescription(words or ("the last rows of the run" if ended else ""))
 
     def _show_key(self) -> None:
         theme, drawn = self.theme, self._drawn
         if isinstance(drawn, Folded):
             entries = [
-                Entry("band", theme.trace, f"{drawn.turns} turns"),
+                Entry("thick", theme.trace, f"{drawn.turns} turns"),
                 Entry("line", theme.mean, "their mean"),
                 Entry("line", theme.trace, "last turn"),
             ]
@@ -294,7 +290,7 @@ class TracesView(SavablePlot):
         stops = None if self.source is None else self.source.stops_deg
         if stops is not None and BODY in self.charts:
             self.charts[BODY].lines.across = [(stops[0], "lower stop"), (stops[1], "upper stop")]
-        self._newest = None
+        self.newest = None
         self._name_axis()
         self.look_again()
 
