@@ -191,6 +191,18 @@ def test_a_large_text_is_not_coloured_and_the_next_one_is(editor: TextEditor, qt
     qtbot.waitUntil(lambda: colour_at(editor, 0, 0) == QColor(colours(LIGHT)["key"]))
 
 
+def test_a_text_that_grows_large_loses_its_colours_and_is_told_once(editor: TextEditor, qtbot: QtBot) -> None:
+    heard: list[int] = []
+    editor.changed.connect(lambda: heard.append(1))
+    data = QMimeData()
+    data.setText("a = 1\n" * (LARGEST_COLOURED // 6 + 1))
+    editor.text.insertFromMimeData(data)
+    QApplication.processEvents()
+    assert heard == [1] and not colour_at(editor, 0, 0).isValid()
+    qtbot.keyClicks(editor.text, "x")
+    assert heard == [1, 1]
+
+
 def test_what_would_hold_up_typing_is_refused(editor: TextEditor, qtbot: QtBot) -> None:
     refused: list[str] = []
     editor.refused.connect(refused.append)

@@ -39,10 +39,10 @@ def _part(name: str, default: str) -> str:
 
 def session_folder(remembered: str) -> Path:
     """Where sessions go: where the last one went, else the documents of the user."""
-    for folder in (Path(remembered) if remembered else None, user_documents_path()):
-        if folder is not None and folder.is_dir():
-            return folder
-    return Path.home()
+    if remembered and Path(remembered).is_dir():
+        return Path(remembered)
+    documents = user_documents_path()
+    return documents if documents.is_dir() else Path.home()
 
 
 def free_name(folder: Path, name: str) -> str:

@@ -276,7 +276,9 @@ class TextEditor(QWidget):
         if self._loading:
             return
         if self.text.document().characterCount() > LARGEST_COLOURED:
+            self._loading = True  # taking the colours away counts as a change too
             self.colours.switch(False)
+            self._loading = False
         else:  # colouring a text counts as a change of it, which is none to be told
             before, self._seen = self._seen, self.plain_text()
             if self._seen == before:
