@@ -195,6 +195,8 @@ class Window(QMainWindow):
         model.sounds.clear()
         self.run.refresh(model, changed)
         self.outcome.refresh(model)
+        if self._closing and model.phase == "waiting":
+            self.link.send("end")
 
     def _ended(self) -> None:
         if self.link is None:
@@ -312,8 +314,7 @@ class Window(QMainWindow):
         if self.running and not self._closing:
             self._closing = True
             self.halt()
-            if self.link is not None:
-                self.link.send("end")
+            self.ask("end")  # of a run that stands still already
             self.say(
                 "Halting; the window closes when the session is sealed. Close again to leave it to itself."
             )

@@ -93,6 +93,7 @@ class Interlocks:
             winding = WindingModel(rig.motor, rig.limits.winding_deg_c)
         self.winding = winding
         self._latched: set[str] = set()
+        self.taken_away = False  # the drive: by a coast or a brake, until it is switched on again
         self._unlatched = False  # whether the board has been seen without a latch
         self._origin: int | None = None
         self._last_tick: int | None = None
@@ -117,6 +118,12 @@ class Interlocks:
         if self._origin is None:
             self._origin = int(block.tick[0])
         trips: list[Trip] = []
+        if not block.status & Status.LATCHED:
+            self._unlatched = True
+        elif self._unlatched:  # its notice may have been lost on the way
+            self._board(trips, _why(block.status), tick)
+        # Rows from before the latch of an earlier run was cleared are none of this run's trips; arming a board
+        # that is still latched is refused there.
         volts, amps = 0.0, 0.0
         if (column := self._column["motor current"]) is not None:
             current = self._channels[column].values(block.raw[:, column])
@@ -125,7 +132,9 @@ class Interlocks:
             self._heat(trips, float(current @ current) / len(current), tick)
         if (column := self._column["motor voltage"]) is not None:
             volts = self._largest(block, column)
-            self._limit(trips, "voltage", "motor voltage", volts, limits.voltage_v, "V", tick)
+            # Opening the terminals of a motor under current kicks their voltage up; no supply is behind it.
+            if not self.taken_away and not block.status & Status.LATCHED:
+                self._limit(trips, "voltage", "motor voltage", volts, limits.voltage_v, "V", tick)
         if (column := self._column["crank angle"]) is not None:
             flap = self.crank.add(tick, int(block.raw[-1, column]))
             self._limit(trips, "flap_rate", "flap rate", flap, limits.flap_hz, "Hz", tick)
@@ -137,12 +146,6 @@ class Interlocks:
             load = self._largest(block, column)
             self._limit(trips, "load", "vertical load", load, limits.load_n, "N", tick)
         self._losses(trips, block, tick)
-        if not block.status & Status.LATCHED:
-            self._unlatched = True
-        elif self._unlatched:  # its notice may have been lost on the way
-            self._board(trips, _why(block.status), tick)
-        # Rows from before the latch of an earlier run was cleared are none of this run's trips; arming a board
-        # that is still latched is refused there.
         self._last_tick = tick
         return trips
 

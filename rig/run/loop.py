@@ -252,6 +252,7 @@ class Loop:
         match command:
             case cm.Enable():
                 tick = bench.enable()
+                self.interlocks.taken_away = False
             case cm.Rearm():
                 try:
                     bench.clear_latch()
@@ -266,6 +267,7 @@ class Loop:
                 tick = bench.drive(command.target_v, command.slew_v_per_s)
             case cm.HaltDrive():
                 tick = bench.halt(command.how, command.slew_v_per_s)
+                self.interlocks.taken_away = command.how is not Halt.RAMP
             case cm.LockDrive():
                 tick = bench.lock()
             case cm.UnlockDrive():
