@@ -9,7 +9,15 @@ from pathlib import Path
 
 from PySide6.QtCore import QByteArray, QEvent, QObject, Qt, QTimer, QUrl
 from PySide6.QtGui import QAction, QCloseEvent, QDesktopServices, QKeyEvent, QKeySequence
-from PySide6.QtWidgets import QApplication, QFileDialog, QMainWindow, QStackedWidget, QVBoxLayout, QWidget
+from PySide6.QtWidgets import (
+    QApplication,
+    QFileDialog,
+    QMainWindow,
+    QMessageBox,
+    QStackedWidget,
+    QVBoxLayout,
+    QWidget,
+)
 
 from rig.bench.job import Job
 from rig.desk.link import BenchLink
@@ -25,7 +33,6 @@ from rig.desk.widgets.prepare_page import PreparePage
 from rig.desk.widgets.replay_bar import ReplayBar
 from rig.desk.widgets.run_page import EVERYTHING, RunPage
 from rig.desk.widgets.start_page import StartPage
-from rig.files.forecast import forecast
 
 DRAW_MS = 33
 #: Keys that halt whatever has the focus; a foot pedal sends one of them.
@@ -40,6 +47,9 @@ class Window(QMainWindow):
         self.memory = memory
         self.sounds = sounds
         self.theme = THEMES.get(memory.theme, LIGHT)
+        app = QApplication.instance()
+        assert isinstance(app, QApplication)
+        style.apply(app, self.theme)  # before anything takes its size from a font
         self.link: BenchLink | None = None
         self.replaying: Replaying | None = None
         self.report: ReportTask | None = None
@@ -74,8 +84,6 @@ class Window(QMainWindow):
         self._draw = QTimer(self)
         self._draw.setInterval(DRAW_MS)
         self._draw.timeout.connect(self._tick)
-        app = QApplication.instance()
-        assert app is not None
         app.installEventFilter(self)
 
     # -- building --------------------------------------------------------------------------------------
@@ -166,12 +174,16 @@ class Window(QMainWindow):
         ring = self._ring_folder / f"ring-{Path(job.out).stem}"
         ring.unlink(missing_ok=True)
         job = replace(job, ring=str(ring))
-        rig = job.rig()
-        protocol = job.protocol(rig)
+        # All that takes long comes before the bench process is there to wait for signs of life.
+        checked = self.prepare.checked_of(job)
+        if checked.rig is None or checked.protocol is None or checked.forecast is None:
+            self.say("The files cannot be run; see what is wrong with them.")
+            self.show_prepare()
+            return
         self.link = BenchLink(job, self)
         self.link.changed.connect(self._changed)
         self.link.ended.connect(self._ended)
-        self.run.begin(job, rig, protocol.name, forecast(rig, protocol).levels)
+        self.run.begin(job, checked.rig, checked.protocol.name, checked.forecast.levels)
         self.run.refresh(self.link.model, EVERYTHING)
         self.outcome.setVisible(False)
         self.pages.setCurrentWidget(self.bench_page)
@@ -262,6 +274,7 @@ class Window(QMainWindow):
 
     def leave_replay(self) -> None:
         if self.replaying is not None:
+            self.run.end()
             self.replaying.close()
             self.replaying = None
             self.replay_bar.setVisible(False)
@@ -309,6 +322,18 @@ class Window(QMainWindow):
                 self.halt()
         return super().eventFilter(watched, event)
 
+    def _may_go(self) -> bool:
+        """Edits that are in no file are not thrown away without asking, and asking is never in a run's way."""
+        unsaved = self.prepare.unsaved()
+        if not unsaved or not self.isVisible():
+            return True
+        words = f"Edits of {' and '.join(unsaved)} are in no file yet. Close and lose them?"
+        buttons = QMessageBox.StandardButton.Discard | QMessageBox.StandardButton.Cancel
+        answer = QMessageBox.question(
+            self, "Edits not saved", words, buttons, QMessageBox.StandardButton.Cancel
+        )
+        return answer is QMessageBox.StandardButton.Discard
+
     def closeEvent(self, event: QCloseEvent) -> None:
         """A run still on is halted; the window goes once its session is sealed, or at the second asking."""
         if self.running and not self._closing:
@@ -320,16 +345,19 @@ class Window(QMainWindow):
             )
             event.ignore()
             return
+        if not self.running and not self._may_go():
+            event.ignore()
+            return
         self.memory.geometry = bytes(self.saveGeometry().toBase64().data()).decode("ascii")
         self.memory.save()
         if self.link is not None:
             self.link.close()
         if self.report is not None:
             self.report.cancel()
-        if self.replaying is not None:
-            self.replaying.close()
         self._draw.stop()
         self.run.end()
+        if self.replaying is not None:
+            self.replaying.close()
         self.prepare.close_down()
         self.sounds.close()
         app = QApplication.instance()

@@ -121,7 +121,6 @@ class TurnMeans:
     def _add_whole(self, time_s: Values, value: Values, crank_rad: Values) -> None:
         time = np.concatenate((self._time, time_s))
         values, crank = np.concatenate((self._value, value)), np.concatenate((self._crank, crank_rad))
-        keep = 0
         if len(time) > 2:
             marks = turn_times(time, crank)
             if len(marks) > 1:
@@ -132,11 +131,18 @@ class TurnMeans:
                 self.mean = np.concatenate((self.mean, mean))
                 self.flap_hz = np.concatenate((self.flap_hz, 1.0 / np.diff(marks)))
                 self.broken = np.concatenate((self.broken, broken))
-                keep = max(int(np.searchsorted(time, marks[-1], side="right")) - 1, 0)
+                time, values, crank = _from(marks[-1], time, values, crank)
         oldest = int(np.searchsorted(time, time[-1] - SLOWEST_TURN_S))
-        if oldest > keep:
-            keep, self._gap = oldest, True
-        self._time, self._value, self._crank = time[keep:], values[keep:], crank[keep:]
+        if oldest:
+            self._gap = True
+        self._time, self._value, self._crank = time[oldest:], values[oldest:], crank[oldest:]
         old = int(np.searchsorted(self.middle_s, time[-1] - self._span_s))
         self.middle_s, self.mean = self.middle_s[old:], self.mean[old:]
         self.flap_hz, self.broken = self.flap_hz[old:], self.broken[old:]
+
+
+def _from(start_s: float, *rows: Values) -> list[Values]:
+    """The rows (time first) after a moment, with one at the moment itself, so that the next turn begins there."""
+    time = rows[0]
+    after = int(np.searchsorted(time, start_s, side="right"))
+    return [np.concatenate(([np.interp(start_s, time, values)], values[after:])) for values in rows]

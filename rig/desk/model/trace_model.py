@@ -170,8 +170,11 @@ class RingSource:
         if fresh:
             step = max(1, round(span_s * reader.tick_hz / columns / self._bin_ticks))
             self._columns = Columns(step * self._bin_ticks, span_s * reader.tick_hz)
-        if self._origin_tick is None and bins["number"][0] == 0:
-            self._origin_tick = int(tick[0])
+        if self._origin_tick is None:
+            # Until the run says when it began, its first row does, as long as that is kept.
+            oldest = bins if bins["number"][0] == 0 else reader.bins(reader.capacity)
+            if len(oldest) and oldest["number"][0] == 0:
+                self._origin_tick = int(oldest["tick"][0])
         held = self._columns
         assert held is not None
         places = [place for place, _ in self._used]

@@ -94,6 +94,7 @@ class Scale(pg.GraphicsWidget):
         self._theme, self._font, self._names_px = theme, font, names_px
         metrics = QFontMetricsF(scale_font(font))
         if self._side == "left":
+            self.setPreferredHeight(0.0)  # as high as its view, whatever that is
             self.setFixedWidth(names_px + metrics.horizontalAdvance(numbers) + 0.7 * metrics.height())
         else:
             lines = 2.0 if self._name else 1.0

@@ -23,6 +23,7 @@ class Canvas(pg.GraphicsLayoutWidget):
         super().__init__(parent)
         self.setContextMenuPolicy(Qt.ContextMenuPolicy.NoContextMenu)
         self.setFocusPolicy(Qt.FocusPolicy.NoFocus)
+        self.setCacheMode(pg.GraphicsView.CacheModeFlag.CacheNone)  # a saved drawing would hold a picture
         self.setFrameShape(pg.GraphicsView.Shape.NoFrame)
         self.ci.layout.setContentsMargins(0.0, 0.0, 0.0, 0.0)
         self.ci.layout.setSpacing(0.0)

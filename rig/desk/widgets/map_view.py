@@ -67,8 +67,10 @@ class MapView(SavablePlot):
         self.bands = {direction: QGraphicsRectItem() for direction in DIRECTIONS}
         self.edges = {direction: pg.InfiniteLine(0.0, angle=90) for direction in DIRECTIONS}
         self.bars = {direction: self.chart.curve(2.0) for direction in DIRECTIONS}
-        self.marks = {direction: pg.ScatterPlotItem(pxMode=True, antialias=True) for direction in DIRECTIONS}
-        self.ring = pg.ScatterPlotItem(pxMode=True, antialias=True, symbol="o")
+        # Drawn as lines each time, not as pictures of marks: they stay sharp in a saved drawing.
+        look = {"pxMode": True, "antialias": True, "useCache": False}
+        self.marks = {direction: pg.ScatterPlotItem(**look) for direction in DIRECTIONS}
+        self.ring = pg.ScatterPlotItem(**look, symbol="o")
         for direction in DIRECTIONS:
             self.bands[direction].setZValue(-50.0)
             self.bands[direction].setPen(Qt.PenStyle.NoPen)

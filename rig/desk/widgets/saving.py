@@ -171,7 +171,7 @@ class SavablePlot(QWidget):
         self.control_row.setContentsMargins(0, 0, 0, 0)
         self.control_row.setSpacing(2)
         self.controls.setStyleSheet(compact_buttons(theme))
-        self._dialog: QFileDialog | None = None
+        self.dialog: QFileDialog | None = None
         self.save_action = self._action("Save the picture …", QKeySequence.StandardKey.Save, self.ask_where)
         self.copy_action = self._action("Copy the values", QKeySequence.StandardKey.Copy, self.copy_values)
 
@@ -203,8 +203,8 @@ class SavablePlot(QWidget):
 
     def ask_where(self) -> None:
         """Ask for a file, without keeping anything else from being used meanwhile."""
-        if self._dialog is not None:
-            self._dialog.raise_()
+        if self.dialog is not None:
+            self.dialog.raise_()
             return
         dialog = QFileDialog(self, "Save the picture", str(self.folder / f"{self.file_name}.png"))
         dialog.setOption(QFileDialog.Option.DontUseNativeDialog)
@@ -218,11 +218,11 @@ class SavablePlot(QWidget):
         dialog.setAttribute(Qt.WidgetAttribute.WA_DeleteOnClose)
         dialog.fileSelected.connect(lambda name: self.save_to(Path(name)))
         dialog.finished.connect(self._dialog_gone)
-        self._dialog = dialog
+        self.dialog = dialog
         dialog.show()
 
     def _dialog_gone(self) -> None:
-        self._dialog = None
+        self.dialog = None
 
     def save_to(self, path: Path) -> bool:
         """Write the picture; False, with a sentence by `failed`, if it cannot be."""

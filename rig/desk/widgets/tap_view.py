@@ -81,8 +81,10 @@ class TapView(SavablePlot):
         self.canvas.addItem(self.caption, row=1, col=1)
         self.below = Chart(self.canvas, 2, bottom=True)
         layout = self.canvas.ci.layout
-        layout.setRowStretchFactor(0, 5)
-        layout.setRowStretchFactor(2, 2)
+        for row, chart, share in ((0, self.above, 5), (2, self.below, 2)):
+            layout.setRowStretchFactor(row, share)
+            chart.view.setMinimumHeight(0.0)
+            chart.view.setPreferredHeight(5.0 * share)
         self.used = [QGraphicsRectItem(), QGraphicsRectItem()]
         for chart, patch in zip((self.above, self.below), self.used, strict=True):
             patch.setZValue(-50.0)

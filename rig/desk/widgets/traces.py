@@ -71,7 +71,9 @@ class SignalChart(Chart):
 
     def draw_course(self, trace: Trace, mean: Trace | None) -> None:
         self._show_band(False)
-        draw(self.course, *zigzag(trace.time_s, trace.low, trace.high), np.repeat(trace.broken, 2))
+        broken = np.zeros(2 * len(trace.broken), bool)
+        broken[::2] = trace.broken  # before the column, not inside it
+        draw(self.course, *zigzag(trace.time_s, trace.low, trace.high), broken)
         if mean is None:
             self.mean.setData([], [])
         else:
