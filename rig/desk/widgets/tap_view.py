@@ -81,7 +81,7 @@ class TapView(SavablePlot):
         self.canvas.addItem(self.caption, row=1, col=1)
         self.below = Chart(self.canvas, 2, bottom=True)
         layout = self.canvas.ci.layout
-        for row, chart, share in ((0, self.above, 5), (2, self.below, 2)):
+        for row, chart, share in ((0, self.above, 5), (2, self.below, 3)):
             layout.setRowStretchFactor(row, share)
             chart.view.setMinimumHeight(0.0)
             chart.view.setPreferredHeight(5.0 * share)
