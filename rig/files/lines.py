@@ -14,6 +14,7 @@ LARGEST_BYTES = 2**20
 DEEPEST = 32
 KEY = r"""(?:[A-Za-z0-9_-]+|"(?:[^"\\]|\\.)*"|'[^']*')"""
 DOTTED = re.compile(rf"\s*({KEY}(?:\s*\.\s*{KEY})*)\s*")
+LONG_KEY = re.compile(r"(?:[A-Za-z0-9_-]+\s*\.\s*){200}")
 LONG_NUMBER = re.compile(r"[0-9_]{4300,}")
 PLACE = re.compile(r"\s*\(at (?:line (\d+), column \d+|end of document)\)")
 
@@ -67,6 +68,10 @@ def parse(text: str, name: str) -> Document:
     """Read a TOML text. FileProblems, with the line, if it is not well-formed or a key comes twice."""
     if text.startswith("\ufeff"):
         raise FileProblems([Problem(name, 1, "", "a byte-order mark", "UTF-8 text without one")])
+    if (long := LONG_KEY.search(text)) is not None:
+        # Its tables would be nested so deep; the library takes minutes to make them.
+        line = text.count("\n", 0, long.start()) + 1
+        raise FileProblems([Problem(name, line, "", "", f"tables nested at most {DEEPEST} deep")])
     try:
         data = tomllib.loads(text)
     except RecursionError:

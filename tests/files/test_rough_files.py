@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from rig.files.lines import read_text
+from rig.files.lines import parse, read_text
 from rig.files.protocol import protocol_from_text
 from rig.files.rig import rig_from_text
 from rig.problem import FileProblems
@@ -71,3 +71,11 @@ def test_a_device_is_no_file(tmp_path: Path) -> None:
         read_text("/dev/zero")
     with pytest.raises(FileProblems):
         read_text(tmp_path)
+
+
+def test_a_key_of_very_many_parts_is_told_at_once() -> None:
+    """The library takes minutes over it."""
+    text = "haltere_rig = 1\n" + ".".join(["a"] * 200_000) + " = 1\n"
+    with pytest.raises(FileProblems) as told:
+        parse(text, "deep.toml")
+    assert str(told.value) == "deep.toml:2: expected tables nested at most 32 deep"
