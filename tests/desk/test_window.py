@@ -88,7 +88,7 @@ def test_a_whole_protocol_with_a_redone_tap_a_trip_and_going_on(
     model = window.link.model  # type: ignore[union-attr]
     told = told_of(window)
     qtbot.waitUntil(
-        lambda: 0 in model.pictures and model.tap(0).outcome != "observed" or told(), timeout=LONG_MS
+        lambda: (0 in model.pictures and model.tap(0).outcome != "observed") or told(), timeout=LONG_MS
     )
     assert window.run.tap.isVisible() and window.run.ladder.tap_box(0) is not None
     qtbot.keyClick(window, Qt.Key.Key_R)  # whichever tap was the last by then
