@@ -55,7 +55,7 @@ def view(qapp: QApplication, qtbot: QtBot) -> TapView:
 def test_a_tap_that_counts() -> None:
     page = tap_page(run().model, 2)
     assert page is not None and (page.number, page.place, page.count) == (2, 3, 3)
-    assert page.level == "▼ falling 8.4 V, stable so far"
+    assert page.level == "▼ falling 8.4 V, stable"
     assert page.decay.replace(FIRM, " ") == "0.800 ±0.020 1/s (95 %)"
     assert page.mode.replace(FIRM, " ") == "1.250 ±0.003 Hz (95 %)"
     assert page.returned == "returned" and page.missing == ""

@@ -130,7 +130,7 @@ def _level(rung: Rung | None) -> str:
     if rung is None:
         return ""
     where = f"{DIRECTION_SIGNS.get(rung.direction, '')} {rung.direction} {bare(rung.drive_v)} V".strip()
-    return f"{where}, {said(rung.regime)} so far" if rung.regime else where
+    return f"{where}, {said(rung.regime)}" if rung.regime else where
 
 
 def _measured(told: Mapping[str, Any] | None, mark: TapMark | None = None) -> Measured:

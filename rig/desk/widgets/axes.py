@@ -45,6 +45,12 @@ def wash(colour: str, share: float) -> QBrush:
     return QBrush(made)
 
 
+def in_pixels(made: QPen) -> QPen:
+    """The same pen for what is drawn in the widget's own pixels: as wide on a fine screen as on any other."""
+    made.setCosmetic(False)
+    return made
+
+
 def scale_font(font: QFont) -> QFont:
     made = QFont(font)
     if font.pointSizeF() > 0.0:
@@ -212,7 +218,7 @@ class LightLines(pg.GraphicsObject):
             y = round(tall * (1.0 - (value - low) / (high - low)))
             if not 0.0 <= y <= tall:
                 continue
-            painter.setPen(dashed(theme.faint, (6.0, 4.0)))
+            painter.setPen(in_pixels(dashed(theme.faint, (6.0, 4.0))))
             painter.drawLine(QPointF(0.0, y), QPointF(wide, y))
             below = y + metrics.height() <= tall
             place = QRectF(0.0, y if below else y - metrics.height(), wide - 4.0, metrics.height())
@@ -221,7 +227,7 @@ class LightLines(pg.GraphicsObject):
         for value, words in self.marks:
             x = round(wide * (value - left) / (right - left))
             if 0.0 <= x <= wide:
-                painter.setPen(dashed(theme.ink, (1.5, 2.5)))
+                painter.setPen(in_pixels(dashed(theme.ink, (1.5, 2.5))))
                 painter.drawLine(QPointF(x, 0.0), QPointF(x, tall))
                 painter.setPen(QColor(theme.faint))
                 painter.drawText(QPointF(x + 3.0, metrics.ascent()), words)

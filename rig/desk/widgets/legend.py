@@ -10,7 +10,7 @@ from PySide6.QtGui import QColor, QFontMetricsF, QPainter, QPaintEvent
 from PySide6.QtWidgets import QSizePolicy, QWidget
 
 from rig.desk.theme import Theme
-from rig.desk.widgets.axes import dashed, pen, scale_font, wash
+from rig.desk.widgets.axes import dashed, in_pixels, pen, scale_font, wash
 from rig.desk.widgets.shapes import SHAPES, draw_shape
 
 #: Dashes and gaps of lines that are told apart by them, in widths.
@@ -106,7 +106,6 @@ def draw_sample(painter: QPainter, place: QRectF, entry: Entry, theme: Theme) ->
             draw_shape(painter, kind, square, QColor(entry.colour), QColor(theme.panel))
         else:
             width = 1.5
-            painter.setPen(
-                dashed(entry.colour, DASHES[kind], width) if kind in DASHES else pen(entry.colour, width)
-            )
+            drawn = dashed(entry.colour, DASHES[kind], width) if kind in DASHES else pen(entry.colour, width)
+            painter.setPen(in_pixels(drawn))
             painter.drawLine(QPointF(place.left(), middle), QPointF(place.right(), middle))

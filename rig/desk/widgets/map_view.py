@@ -166,7 +166,7 @@ class MapView(SavablePlot):
             y=[self._height(point) for point in points],
             symbol=[symbol(direction, point.shape) for point in points],
             size=MARK * self._line,
-            pen=pen(colour, LINE_WIDTH),
+            pen=pen(colour, LINE_WIDTH * self.pixel),
             brush=[
                 QBrush(QColor(colour if point.shape == "filled" else self.theme.panel)) for point in points
             ],
@@ -299,16 +299,17 @@ class MapView(SavablePlot):
         self.canvas.setMinimumHeight(math.ceil(7.5 * self._line))
         self.caption.set_look(theme, font)
         self.chart.set_look(theme, font, numbers="−000")
-        self.zero.setPen(pen(theme.ink))
-        self.fit.setPen(pen(theme.fit, LINE_WIDTH))
-        self.theory.setPen(dashed(theme.theory, DASHES["dash"], LINE_WIDTH))
+        wide = LINE_WIDTH * self.pixel
+        self.zero.setPen(pen(theme.ink, self.pixel))
+        self.fit.setPen(pen(theme.fit, wide))
+        self.theory.setPen(dashed(theme.theory, DASHES["dash"], wide))
         for direction in DIRECTIONS:
             colour = theme.falling if direction == "falling" else theme.rising
             self.bands[direction].setBrush(wash(colour, BAND_SHARE))
-            self.edges[direction].setPen(dashed(colour, DASHES[BAND_LINE[direction]], 1.0))
-            self.bars[direction].setPen(pen(colour))
+            self.edges[direction].setPen(dashed(colour, DASHES[BAND_LINE[direction]], self.pixel))
+            self.bars[direction].setPen(pen(colour, self.pixel))
         self.ring.setSize(2.0 * MARK * self._line)
-        self.ring.setPen(pen(theme.ink, LINE_WIDTH))
+        self.ring.setPen(pen(theme.ink, wide))
         self.ring.setBrush(None)
         self.told.setMinimumHeight(math.ceil(2.0 * self._line))
         self.key.set_theme(theme)

@@ -262,6 +262,16 @@ class SavablePlot(QWidget):
         if event.type() == QEvent.Type.FontChange and self._ready:
             self.look_again()
 
+    def event(self, event: QEvent) -> bool:
+        if event.type() == QEvent.Type.DevicePixelRatioChange and self._ready:
+            self.look_again()
+        return super().event(event)
+
+    @property
+    def pixel(self) -> float:
+        """Dots of the screen in a pixel: what a pen's width is to be taken by, lest lines be thin on a fine screen."""
+        return self.devicePixelRatioF()
+
     def set_theme(self, theme: Theme) -> None:
         """Other colours."""
         self.theme = theme

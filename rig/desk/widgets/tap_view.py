@@ -243,8 +243,8 @@ class TapView(SavablePlot):
         metrics = QFontMetricsF(font)
         self.title.setFont(sized(font, 1.0, bold=True))
         self.rows.setBrush(wash(theme.trace, THICK_SHARE))
-        self.mean.setPen(pen(theme.mean, MEAN_WIDTH))
-        self.fit.setPen(dashed(theme.fit, DASHES["dash"], MODEL_WIDTH))
+        self.mean.setPen(pen(theme.mean, MEAN_WIDTH * self.pixel))
+        self.fit.setPen(dashed(theme.fit, DASHES["dash"], MODEL_WIDTH * self.pixel))
         self.residual.setPen(pen(theme.trace))
         for patch in self.used:
             patch.setBrush(wash(theme.band, BAND_SHARE))
