@@ -49,7 +49,9 @@ def main(words: argparse.Namespace) -> Exit:
 
 def _in_the_window(words: argparse.Namespace) -> Exit:
     if words.json or words.speed is not None:
-        raise CommandError("--desk: speed is chosen in the window, and there is no JSON; expected SESSION alone")
+        raise CommandError(
+            "--desk: speed is chosen in the window, and there is no JSON; expected SESSION alone"
+        )
     opened(words.session).close()
     from rig.command.desk import show
 

@@ -8,9 +8,9 @@ from typing import Any
 from PySide6.QtCore import QElapsedTimer, QObject, QRunnable, QThreadPool, Signal
 
 from rig.desk.model.replay_model import ReplayModel
-from rig.desk.model.run_model import TAP, Changed
+from rig.desk.model.run_model import EVERYTHING, TAP, Changed
 from rig.desk.widgets.replay_bar import ReplayBar
-from rig.desk.widgets.run_page import EVERYTHING, RunPage
+from rig.desk.widgets.run_page import RunPage
 from rig.problem import FileProblems
 from rig.record.errors import Damaged
 from rig.session import open_session

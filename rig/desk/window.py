@@ -5,36 +5,40 @@ from __future__ import annotations
 import shutil
 import tempfile
 from dataclasses import replace
+from functools import cached_property
 from pathlib import Path
+from typing import TYPE_CHECKING
 
-from PySide6.QtCore import QByteArray, QEvent, QObject, Qt, QTimer, QUrl
-from PySide6.QtGui import QAction, QCloseEvent, QDesktopServices, QKeyEvent, QKeySequence
+from PySide6.QtCore import QByteArray, QEvent, QObject, Qt, QTimer
+from PySide6.QtGui import QAction, QCloseEvent, QKeyEvent, QKeySequence
 from PySide6.QtWidgets import (
     QApplication,
     QFileDialog,
     QMainWindow,
     QMessageBox,
     QStackedWidget,
-    QVBoxLayout,
-    QWidget,
 )
 
 from rig.bench.job import Job
 from rig.desk.link import BenchLink
 from rig.desk.model.memory import Memory
-from rig.desk.model.run_model import Changed
-from rig.desk.replaying import Replaying
-from rig.desk.report_task import ReportTask
+from rig.desk.model.run_model import EVERYTHING, Changed
+from rig.desk.reports import Reports
 from rig.desk.sound import Sounds
 from rig.desk.theme import DARK, LIGHT, THEMES
 from rig.desk.widgets import style
-from rig.desk.widgets.outcome_bar import OutcomeBar
-from rig.desk.widgets.prepare_page import PreparePage
-from rig.desk.widgets.replay_bar import ReplayBar
-from rig.desk.widgets.run_page import EVERYTHING, RunPage
 from rig.desk.widgets.start_page import StartPage
 
+if TYPE_CHECKING:
+    from rig.desk.bench_page import BenchPage
+    from rig.desk.replaying import Replaying
+    from rig.desk.widgets.outcome_bar import OutcomeBar
+    from rig.desk.widgets.prepare_page import PreparePage
+    from rig.desk.widgets.replay_bar import ReplayBar
+    from rig.desk.widgets.run_page import RunPage
+
 DRAW_MS = 33
+LATER_MS = 100
 #: Keys that halt whatever has the focus; a foot pedal sends one of them.
 HALT_KEYS = (Qt.Key.Key_Escape, Qt.Key.Key_F12, Qt.Key.Key_Pause)
 
@@ -52,63 +56,90 @@ class Window(QMainWindow):
         style.apply(app, self.theme)  # before anything takes its size from a font
         self.link: BenchLink | None = None
         self.replaying: Replaying | None = None
-        self.report: ReportTask | None = None
         self._closing = False
         self._ring_folder = Path(tempfile.mkdtemp(prefix="haltere-", dir=_memory_folder()))
+        self._state_folder = state_folder
         self.start = StartPage(self.theme, memory=memory)
-        self.prepare = PreparePage(self.theme, memory=memory, state_folder=state_folder)
-        self.run = RunPage(self.theme)
-        self.outcome = OutcomeBar(self.theme)
-        self.replay_bar = ReplayBar(self.theme)
-        self.replay_bar.setVisible(False)
-        bench = QWidget()
-        column = QVBoxLayout(bench)
-        column.setContentsMargins(0, 0, 0, 0)
-        column.setSpacing(0)
-        column.addWidget(self.run, 1)
-        column.addWidget(self.outcome)
-        column.addWidget(self.replay_bar)
-        self.bench_page = bench
         self.pages = QStackedWidget()
-        for page in (self.start, self.prepare, bench):
-            self.pages.addWidget(page)
+        self.pages.addWidget(self.start)
         self.setCentralWidget(self.pages)
         self.setWindowTitle("Haltere")
         self.setMinimumSize(1024, 640)
         self.resize(1280, 720)
         self._connect()
         self._menus()
-        self.set_theme(self.theme.name)
         if memory.geometry:
             self.restoreGeometry(QByteArray.fromBase64(memory.geometry.encode("ascii")))
         self._draw = QTimer(self)
         self._draw.setInterval(DRAW_MS)
         self._draw.timeout.connect(self._tick)
         app.installEventFilter(self)
+        # The other pages are made once the first one is seen.
+        self._later = QTimer(self)
+        self._later.setSingleShot(True)
+        self._later.timeout.connect(self.build)
+        self._later.start(LATER_MS)
 
     # -- building --------------------------------------------------------------------------------------
 
-    def _connect(self) -> None:
-        self.start.try_simulated.connect(self.try_simulated)
-        self.start.prepare.connect(self.show_prepare)
-        self.start.replay.connect(self.choose_replay)
-        self.start.replay_file.connect(self.open_replay)
-        self.prepare.armed.connect(self.start_run)
-        self.prepare.back.connect(lambda: self.pages.setCurrentWidget(self.start))
-        self.run.halted.connect(self.halt)
-        self.run.asked.connect(self.ask)
-        self.run.tap_wanted.connect(self.show_tap)
-        self.outcome.report.connect(self.open_report)
-        self.outcome.cancel_report.connect(self.cancel_report)
-        self.outcome.replay.connect(self._replay_last)
-        self.outcome.again.connect(self.show_prepare)
-        bar = self.replay_bar
+    def build(self) -> None:
+        """Make all pages; what is needed before is made when it is needed."""
+        assert self.prepare is not None and self.bench is not None
+
+    @cached_property
+    def prepare(self) -> PreparePage:
+        """The page on which a run is prepared."""
+        from rig.desk.widgets.prepare_page import PreparePage
+
+        page = PreparePage(self.theme, memory=self.memory, state_folder=self._state_folder)
+        page.armed.connect(self.start_run)
+        page.back.connect(lambda: self.pages.setCurrentWidget(self.start))
+        self.pages.addWidget(page)
+        return page
+
+    @cached_property
+    def bench(self) -> BenchPage:
+        """The page of a run or a replay."""
+        from rig.desk.bench_page import BenchPage
+
+        page = BenchPage(self.theme)
+        page.run.halted.connect(self.halt)
+        page.run.asked.connect(self.ask)
+        page.run.tap_wanted.connect(self.show_tap)
+        self.reports = Reports(page.outcome, lambda: self.link.model.session if self.link is not None else "")
+        page.outcome.replay.connect(self._replay_last)
+        page.outcome.again.connect(self.show_prepare)
+        bar = page.replay_bar
         bar.play.connect(lambda on: self._replay("play", on))
         bar.speed.connect(lambda speed: self._replay("set_speed", speed))
         bar.seek.connect(lambda at_s: self._replay("seek", at_s))
         bar.step_event.connect(lambda way: self._replay("step_event", way))
         bar.step_tap.connect(lambda way: self._replay("step_tap", way))
         bar.leave.connect(self.leave_replay)
+        self.pages.addWidget(page)
+        return page
+
+    @property
+    def run(self) -> RunPage:
+        return self.bench.run
+
+    @property
+    def outcome(self) -> OutcomeBar:
+        return self.bench.outcome
+
+    @property
+    def replay_bar(self) -> ReplayBar:
+        return self.bench.replay_bar
+
+    def _made(self, name: str) -> bool:
+        """Whether a page has been made yet."""
+        return name in self.__dict__
+
+    def _connect(self) -> None:
+        self.start.try_simulated.connect(self.try_simulated)
+        self.start.prepare.connect(self.show_prepare)
+        self.start.replay.connect(self.choose_replay)
+        self.start.replay_file.connect(self.open_replay)
 
     def _menus(self) -> None:
         for title, actions in (
@@ -143,8 +174,10 @@ class Window(QMainWindow):
         app = QApplication.instance()
         assert isinstance(app, QApplication)
         style.apply(app, self.theme)
-        for part in (self.start, self.prepare, self.run, self.outcome, self.replay_bar):
-            part.set_theme(self.theme)
+        self.start.set_theme(self.theme)
+        for name in ("prepare", "bench"):
+            if self._made(name):
+                getattr(self, name).set_theme(self.theme)
 
     def toggle_sounds(self) -> None:
         self.memory.sound = self.sounds.on = not self.sounds.on
@@ -186,7 +219,7 @@ class Window(QMainWindow):
         self.run.begin(job, checked.rig, checked.protocol.name, checked.forecast.levels)
         self.run.refresh(self.link.model, EVERYTHING)
         self.outcome.setVisible(False)
-        self.pages.setCurrentWidget(self.bench_page)
+        self.pages.setCurrentWidget(self.bench)
         self._draw.start()
 
     def halt(self) -> None:
@@ -256,6 +289,10 @@ class Window(QMainWindow):
         """Show a stored session; False, with a sentence in the window, if it cannot be opened."""
         if self.running:
             return False
+        from rig.desk.replaying import (
+            Replaying,
+        )  # late: it brings the analysis with it, which a run does not need
+
         try:
             replaying = Replaying(Path(path), self.run, self.replay_bar, self)
         except Replaying.Refused as refusal:
@@ -267,7 +304,7 @@ class Window(QMainWindow):
         self.run.set_replay(True)
         self.outcome.setVisible(False)
         self.replay_bar.setVisible(True)
-        self.pages.setCurrentWidget(self.bench_page)
+        self.pages.setCurrentWidget(self.bench)
         self.replaying.begin()
         self._draw.start()
         return True
@@ -285,33 +322,6 @@ class Window(QMainWindow):
         """One sentence at the foot of the window."""
         self.statusBar().showMessage(words, 15_000)
 
-    # -- report ----------------------------------------------------------------------------------------
-
-    def open_report(self) -> None:
-        if self.report is not None or self.link is None or not self.link.model.session:
-            return
-        self.report = ReportTask(Path(self.link.model.session), self)
-        self.report.done.connect(self._report_done)
-        self.report.failed.connect(self._report_failed)
-        self.outcome.set_busy("Working the session out again and writing the report …")
-
-    def cancel_report(self) -> None:
-        if self.report is not None:
-            self.report.cancel()
-        self._report_over("The report was cancelled; the session is untouched.")
-
-    def _report_done(self, path: str) -> None:
-        self._report_over(f"The report is {path}")
-        QDesktopServices.openUrl(QUrl.fromLocalFile(path))
-
-    def _report_failed(self, words: str) -> None:
-        self._report_over(f"No report: {words}")
-
-    def _report_over(self, words: str) -> None:
-        self.report = None
-        self.outcome.set_busy("")
-        self.outcome.say(words)
-
     # -- everywhere ------------------------------------------------------------------------------------
 
     def eventFilter(self, watched: QObject, event: QEvent) -> bool:
@@ -324,7 +334,7 @@ class Window(QMainWindow):
 
     def _may_go(self) -> bool:
         """Edits that are in no file are not thrown away without asking, and asking is never in a run's way."""
-        unsaved = self.prepare.unsaved()
+        unsaved = self.prepare.unsaved() if self._made("prepare") else []
         if not unsaved or not self.isVisible():
             return True
         words = f"Edits of {' and '.join(unsaved)} are in no file yet. Close and lose them?"
@@ -352,13 +362,16 @@ class Window(QMainWindow):
         self.memory.save()
         if self.link is not None:
             self.link.close()
-        if self.report is not None:
-            self.report.cancel()
+        if self._made("bench"):
+            self.reports.cancel()
         self._draw.stop()
-        self.run.end()
+        self._later.stop()
+        if self._made("bench"):
+            self.run.end()
         if self.replaying is not None:
             self.replaying.close()
-        self.prepare.close_down()
+        if self._made("prepare"):
+            self.prepare.close_down()
         self.sounds.close()
         app = QApplication.instance()
         if app is not None:

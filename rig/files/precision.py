@@ -7,7 +7,6 @@ from collections.abc import Sequence
 
 from analysis.averaged import equilibrium
 from analysis.mechanism.ambient import noise_density_for_rms
-from analysis.planning import planned_decay_std
 from rig.description import RigDescription
 
 TWO_PI = 2.0 * math.pi
@@ -24,6 +23,10 @@ def planned_half_width_per_s(
     every tap would throw it onto an end stop. Tap by tap with `analysis.planning.planned_decay_std`, taps weighted
     by their variances.
     """
+    from analysis.planning import (
+        planned_decay_std,
+    )  # late: SciPy takes time to load, and most callers plan nothing
+
     mechanism = rig.mechanism
     rest = None if mechanism is None or rig.unknown else equilibrium(mechanism, flap_hz)
     if mechanism is None or rest is None or rest.decay_per_s**2 >= rest.stiffness_per_s2:

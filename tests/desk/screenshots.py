@@ -55,8 +55,8 @@ class Studio:
 
     def live(self, at_s: float = AT_S) -> None:
         """The run page as it looks at a moment of a run."""
+        from rig.desk.model.run_model import EVERYTHING
         from rig.desk.model.trace_model import StoredSource
-        from rig.desk.widgets.run_page import EVERYTHING
         from rig.files.forecast import forecast
 
         window, player = self.window, self.player
@@ -94,7 +94,7 @@ class Studio:
         page.traces.tick()
 
     def refresh(self) -> None:
-        from rig.desk.widgets.run_page import EVERYTHING
+        from rig.desk.model.run_model import EVERYTHING
 
         self.window.run.refresh(self.player.model, EVERYTHING)
         self.window.outcome.refresh(self.player.model)

@@ -142,12 +142,12 @@ def test_marks_and_bars_stand_where_the_levels_are(view: MapView) -> None:
     view.refresh(run().model)
     rising = view.marks["rising"].points()
     assert np.allclose([tuple(point.pos()) for point in rising], [(28.7**2, 62.0), (32.3**2, 119.0)])
-    bars = np.column_stack(view.bars["rising"].getData())
+    bars = np.column_stack((view.bars["rising"].xs, view.bars["rising"].ys))
     wanted = [(28.7**2, 58.0), (28.7**2, 66.0), (28.6**2, 62.0), (28.8**2, 62.0)]
     assert np.allclose(bars[:4], wanted) and len(bars) == 8
-    assert view.bars["rising"].opts["connect"] == "pairs"
-    assert np.allclose(view.fit.getData()[0], [point[0] ** 2 for point in FIT])
-    assert np.allclose(view.theory.getData()[1], [point[1] for point in THEORY])
+    assert view.bars["rising"].connect == "pairs"
+    assert np.allclose(view.fit.xs, [point[0] ** 2 for point in FIT])
+    assert np.allclose(view.theory.ys, [point[1] for point in THEORY])
 
 
 def test_what_has_no_stiffness_stands_on_the_strip_below_all_numbers(view: MapView) -> None:
@@ -300,8 +300,8 @@ def test_nothing_is_cut_or_overlaps(size: tuple[int, int], view: MapView, qapp: 
 def test_themes_change_every_colour(view: MapView) -> None:
     view.refresh(run().model)
     view.set_theme(DARK)
-    assert view.fit.opts["pen"].color().name().upper() == DARK.fit
-    assert view.bars["rising"].opts["pen"].color().name().upper() == DARK.rising
+    assert view.fit.pen().color().name().upper() == DARK.fit
+    assert view.bars["rising"].pen().color().name().upper() == DARK.rising
     assert view.marks["falling"].points()[0].pen().color().name().upper() == DARK.falling
     assert view.bands["falling"].brush().color().name().upper() == DARK.falling
 

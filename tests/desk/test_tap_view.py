@@ -109,14 +109,14 @@ def test_what_is_drawn_is_what_the_analysis_told(view: TapView) -> None:
     view.refresh(model)
     told = model.pictures[2]
     assert view.title.text() == "Tap 2" and view.position.text() == "3 of 3"
-    assert np.array_equal(view.rows.x_drawn, told["time_s"])
+    assert np.array_equal(view.rows.xs, told["time_s"])
     assert np.array_equal(view.rows.low, told["low_deg"]) and np.array_equal(view.rows.high, told["high_deg"])
     for curve, names in (
         (view.mean, ("mean_time_s", "mean_deg")),
         (view.fit, ("model_time_s", "model_deg")),
         (view.residual, ("model_time_s", "residual_deg")),
     ):
-        for drawn, name in zip(curve.getData(), names, strict=True):
+        for drawn, name in zip((curve.xs, curve.ys), names, strict=True):
             assert np.array_equal(drawn, told[name])
     (left, right), (low, high) = view.above.view.viewRange()
     assert (left, right) == pytest.approx((-0.6, 3.0))
@@ -132,11 +132,11 @@ def test_without_a_fit_nothing_of_the_last_one_is_left(view: TapView) -> None:
     made = run()
     view.refresh(made.model)
     view.show_tap(1)
-    assert not len(view.fit.getData()[0]) and not len(view.residual.getData()[0])
+    assert not len(view.fit.xs) and not len(view.residual.xs)
     assert view.used[0].rect().isEmpty() and view.below.words.text == "no fit"
     assert view.below.left.ticks == [] and "model" not in [entry.words for entry in view.key.entries]
     view.show_tap(2)
-    assert len(view.fit.getData()[0]) and view.below.words.text == ""
+    assert len(view.fit.xs) and view.below.words.text == ""
 
 
 def test_a_picture_that_comes_later_takes_the_place_of_the_word(view: TapView) -> None:
@@ -213,8 +213,8 @@ def test_nothing_is_cut_or_overlaps(
 def test_themes_change_every_colour(view: TapView) -> None:
     view.refresh(run().model)
     view.set_theme(DARK)
-    assert view.fit.opts["pen"].color().name().upper() == DARK.fit
-    assert view.mean.opts["pen"].color().name().upper() == DARK.mean
+    assert view.fit.pen().color().name().upper() == DARK.fit
+    assert view.mean.pen().color().name().upper() == DARK.mean
     assert view.rows.brush().color().name().upper() == DARK.trace
     assert view.accessibleDescription().startswith("accepted; decay rate 0.800")
 
@@ -239,5 +239,5 @@ def test_a_thousand_refreshes_leave_nothing_behind(view: TapView, qapp: QApplica
 def test_values_have_units(view: TapView) -> None:
     view.refresh(run().model)
     columns = {column.header: column.values for column in view.values()}
-    assert np.array_equal(columns["residual (deg)"], view.residual.getData()[1])
+    assert np.array_equal(columns["residual (deg)"], view.residual.ys)
     assert "time since the tap (s)" in columns and measured(1.0, 1.0)["low"] == 0.0

@@ -36,6 +36,7 @@ PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME = (
     "outcome",
 )
 Changed = set[str]
+EVERYTHING: Changed = {PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME}
 
 #: Notices of a board in an operator's words; those of no use to one are left out.
 NOTICES = {

@@ -101,7 +101,7 @@ class Scale(pg.GraphicsWidget):
         metrics = QFontMetricsF(scale_font(font))
         if self._side == "left":
             self.setPreferredHeight(0.0)  # as high as its view, whatever that is
-            self.setFixedWidth(names_px + metrics.horizontalAdvance(numbers) + 0.7 * metrics.height())
+            self.setFixedWidth(names_px + metrics.horizontalAdvance(numbers) + 0.3 * metrics.height())
         else:
             lines = 2.0 if self._name else 1.0
             self.setFixedHeight(lines * metrics.height() + 0.35 * metrics.height())
@@ -122,7 +122,7 @@ class Scale(pg.GraphicsWidget):
         size, metrics = self.size(), QFontMetricsF(painter.font())
         low, high = self._view.viewRange()[1]
         painter.setPen(QColor(theme.faint))
-        line, end = metrics.height(), size.width() - 0.4 * metrics.height()
+        line, end = metrics.height(), size.width()
         before = float("inf")
         for value, text in self._ticks:
             y = size.height() * (1.0 - (value - low) / (high - low)) if high > low else 0.0
@@ -269,6 +269,7 @@ class Words(pg.GraphicsObject):
         super().__init__(view)
         self._view = view
         self.setZValue(100.0)
+        self.setVisible(False)
         self.text = ""
         self._font = QFont()
         self._theme: Theme | None = None
@@ -280,6 +281,7 @@ class Words(pg.GraphicsObject):
     def say(self, text: str) -> None:
         if text != self.text:
             self.text = text
+            self.setVisible(bool(text))
             self.update()
 
     def boundingRect(self) -> QRectF:

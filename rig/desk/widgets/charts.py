@@ -5,15 +5,18 @@ from __future__ import annotations
 import numpy as np
 import pyqtgraph as pg
 from numpy.typing import NDArray
-from PySide6.QtCore import Qt
-from PySide6.QtGui import QFont, QFontMetricsF
-from PySide6.QtWidgets import QGraphicsItem, QGraphicsPathItem, QWidget
+from PySide6.QtCore import QRectF, Qt
+from PySide6.QtGui import QBrush, QFont, QFontMetricsF, QPainter, QPainterPath, QPen
+from PySide6.QtWidgets import QGraphicsItem, QStyleOptionGraphicsItem, QWidget
 
 from rig.desk.model.ranges import ticks
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import LightLines, Scale, Ticks, Words
 
 Values = NDArray[np.float64]
+
+#: Pixels between a view and the scale at its left: what is painted anew is taken 2 pixels wider on both sides.
+GAP = 6.0
 
 
 class Canvas(pg.GraphicsLayoutWidget):
@@ -27,6 +30,8 @@ class Canvas(pg.GraphicsLayoutWidget):
         self.setFrameShape(pg.GraphicsView.Shape.NoFrame)
         self.ci.layout.setContentsMargins(0.0, 0.0, 0.0, 0.0)
         self.ci.layout.setSpacing(0.0)
+        # What moves is not to touch the scales beside it, or they would be painted with it each time.
+        self.ci.layout.setHorizontalSpacing(GAP)
 
     def set_look(self, theme: Theme) -> None:
         self.setBackground(theme.panel)
@@ -64,10 +69,9 @@ class Chart:
         self.lines.set_look(theme, font)
         self.words.set_look(theme, font)
 
-    def curve(self, z: float = 0.0, *, smooth: bool = False) -> pg.PlotCurveItem:
-        """A curve in this view; give it data with `draw`. Smooth ones cost too much to be drawn 30 times a second."""
-        made = pg.PlotCurveItem(skipFiniteCheck=True, antialias=smooth)
-        made.setZValue(z)
+    def curve(self, z: float = 0.0, *, smooth: bool = False) -> Curve:
+        """A curve in this view. Smooth ones cost too much to be drawn 30 times a second."""
+        made = Curve(z, smooth=smooth)
         self.add(made)
         return made
 
@@ -119,30 +123,99 @@ class Chart:
             self._number_y()
 
 
-class Band(QGraphicsPathItem):
-    """The area between least and greatest values over x; `x_drawn`, `low`, `high` are those drawn, shape (n,)."""
+class Drawn(QGraphicsItem):
+    """A path in the units of a view, drawn with one pen and one brush and without a look at anything else.
 
-    def __init__(self, z: float = -1.0) -> None:
+    Ranges are set by whoever knows what is to be seen, so nothing is worked out here for a range of its own.
+    """
+
+    def __init__(self, z: float = 0.0, *, smooth: bool = False) -> None:
         super().__init__()
-        self.setPen(Qt.PenStyle.NoPen)
         self.setZValue(z)
-        self.x_drawn = self.low = self.high = np.empty(0)
+        self._smooth = smooth
+        self._pen, self._brush = QPen(Qt.PenStyle.NoPen), QBrush()
+        self._path, self._bounds = QPainterPath(), QRectF()
 
-    def draw(self, x: Values, low: Values, high: Values) -> None:
-        self.x_drawn, self.low, self.high = x, low, high
-        along, around = np.concatenate((x, x[::-1])), np.concatenate((low, high[::-1]))
-        self.setPath(pg.arrayToQPath(along, around, connect="all", finiteCheck=False))
+    def pen(self) -> QPen:
+        return self._pen
+
+    def brush(self) -> QBrush:
+        return self._brush
+
+    def path(self) -> QPainterPath:
+        return self._path
+
+    def set_pen(self, pen: QPen) -> None:
+        self._pen = pen
+        self.update()
+
+    def set_brush(self, brush: QBrush) -> None:
+        self._brush = brush
+        self.update()
+
+    def boundingRect(self) -> QRectF:
+        return self._bounds
+
+    def paint(
+        self, painter: QPainter, option: QStyleOptionGraphicsItem, widget: QWidget | None = None
+    ) -> None:
+        painter.setRenderHint(QPainter.RenderHint.Antialiasing, self._smooth)
+        painter.setPen(self._pen)
+        painter.setBrush(self._brush)
+        painter.drawPath(self._path)
+
+    def _take(self, x: Values, y: Values, connect: str | NDArray[np.bool_]) -> None:
+        self.prepareGeometryChange()
+        if not len(x):
+            self._path, self._bounds = QPainterPath(), QRectF()
+            return
+        self._path = pg.arrayToQPath(x, y, connect=connect, finiteCheck=False)
+        left, right, low, high = float(x.min()), float(x.max()), float(y.min()), float(y.max())
+        # Room for the pen, whose width is in pixels.
+        wide, tall = 0.02 * (right - left) + 1e-9, 0.1 * (high - low) + 1e-9
+        self._bounds = QRectF(left - wide, low - tall, right - left + 2.0 * wide, high - low + 2.0 * tall)
+
+
+class Curve(Drawn):
+    """A line through points; `xs` and `ys` are those drawn, shape (n,)."""
+
+    def __init__(self, z: float = 0.0, *, smooth: bool = False) -> None:
+        super().__init__(z, smooth=smooth)
+        self.xs = self.ys = np.empty(0)
+        self.connect: str | NDArray[np.bool_] = "all"
+
+    def draw(self, x: Values, y: Values, broken: NDArray[np.bool_] | None = None) -> None:
+        """New points; no line leads to those that are `broken`."""
+        cut = broken is not None and bool(broken[1:].any())
+        self._draw(x, y, np.append(~broken[1:], True) if cut and broken is not None else "all")
+
+    def draw_pairs(self, x: Values, y: Values) -> None:
+        """A line from each point of even number to the one after it."""
+        self._draw(x, y, "pairs")
 
     def clear(self) -> None:
-        self.draw(np.empty(0), np.empty(0), np.empty(0))
+        if len(self.xs):
+            self.draw(np.empty(0), np.empty(0))
+
+    def _draw(self, x: Values, y: Values, connect: str | NDArray[np.bool_]) -> None:
+        self.xs, self.ys, self.connect = x, y, connect
+        self._take(x, y, connect)
 
 
-def draw(curve: pg.PlotCurveItem, x: Values, y: Values, broken: NDArray[np.bool_] | None = None) -> None:
-    """Give a curve new values; `broken` (per point) leaves out the line that leads to a point."""
-    connect: str | NDArray[np.bool_] = "all"
-    if broken is not None and broken[1:].any():
-        connect = np.append(~broken[1:], True)
-    curve.setData(x, y, connect=connect, skipFiniteCheck=True)
+class Band(Drawn):
+    """The area between least and greatest values over x; `xs`, `low` and `high` are those drawn, shape (n,)."""
+
+    def __init__(self, z: float = -1.0) -> None:
+        super().__init__(z)
+        self.xs = self.low = self.high = np.empty(0)
+
+    def draw(self, x: Values, low: Values, high: Values) -> None:
+        self.xs, self.low, self.high = x, low, high
+        self._take(np.concatenate((x, x[::-1])), np.concatenate((low, high[::-1])), "all")
+
+    def clear(self) -> None:
+        if len(self.xs):
+            self.draw(np.empty(0), np.empty(0), np.empty(0))
 
 
 def zigzag(time_s: Values, low: Values, high: Values) -> tuple[Values, Values]:

@@ -27,7 +27,7 @@ from rig.desk.model.ranges import WideningRange, ticks
 from rig.desk.model.run_model import RunModel
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import Caption, dashed, pen, wash
-from rig.desk.widgets.charts import Canvas, Chart, draw
+from rig.desk.widgets.charts import Canvas, Chart
 from rig.desk.widgets.legend import BAND_SHARE, DASHES, Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
 
@@ -123,8 +123,8 @@ class MapView(SavablePlot):
     def _draw(self) -> None:
         page = self.page
         self._set_ranges()
-        draw(self.fit, *page.fit)
-        draw(self.theory, *page.theory)
+        self.fit.draw(*page.fit)
+        self.theory.draw(*page.theory)
         found = {band.direction: band for band in page.bands}
         (_, _), (low, high) = self.chart.view.viewRange()
         for direction in DIRECTIONS:
@@ -160,7 +160,7 @@ class MapView(SavablePlot):
             if rate.low is not None and rate.high is not None:
                 x += [rate.low**2, rate.high**2]
                 y += [float(stiffness.value or 0.0)] * 2
-        self.bars[direction].setData(np.array(x), np.array(y), connect="pairs", skipFiniteCheck=True)
+        self.bars[direction].draw_pairs(np.array(x), np.array(y))
         self.marks[direction].setData(
             x=[point.square for point in points],
             y=[self._height(point) for point in points],
@@ -301,13 +301,13 @@ class MapView(SavablePlot):
         self.chart.set_look(theme, font, numbers="−000")
         wide = LINE_WIDTH * self.pixel
         self.zero.setPen(pen(theme.ink, self.pixel))
-        self.fit.setPen(pen(theme.fit, wide))
-        self.theory.setPen(dashed(theme.theory, DASHES["dash"], wide))
+        self.fit.set_pen(pen(theme.fit, wide))
+        self.theory.set_pen(dashed(theme.theory, DASHES["dash"], wide))
         for direction in DIRECTIONS:
             colour = theme.falling if direction == "falling" else theme.rising
             self.bands[direction].setBrush(wash(colour, BAND_SHARE))
             self.edges[direction].setPen(dashed(colour, DASHES[BAND_LINE[direction]], self.pixel))
-            self.bars[direction].setPen(pen(colour, self.pixel))
+            self.bars[direction].set_pen(pen(colour, self.pixel))
         self.ring.setSize(2.0 * MARK * self._line)
         self.ring.setPen(pen(theme.ink, wide))
         self.ring.setBrush(None)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from PySide6.QtCore import QElapsedTimer, Qt, Signal
 from PySide6.QtWidgets import QFrame, QHBoxLayout, QSplitter, QVBoxLayout, QWidget
@@ -11,7 +12,6 @@ from PySide6.QtWidgets import QFrame, QHBoxLayout, QSplitter, QVBoxLayout, QWidg
 from rig.bench.job import Job
 from rig.description import RigDescription
 from rig.desk.model.ladder_model import PlannedLevel
-from rig.desk.model.replay_model import ReplayModel
 from rig.desk.model.run_model import (
     LEVELS,
     MAP,
@@ -36,7 +36,8 @@ from rig.desk.widgets.style import set_kind
 from rig.desk.widgets.tap_view import TapView
 from rig.desk.widgets.traces import TracesView
 
-EVERYTHING: Changed = {PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME}
+if TYPE_CHECKING:
+    from rig.desk.model.replay_model import ReplayModel
 
 
 class RunPage(QWidget):

@@ -17,7 +17,7 @@ from rig.desk.model.run_model import RunModel
 from rig.desk.model.tap_model import TapCurves, TapPage, tap_numbers, tap_page
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import Caption, dashed, pen, wash
-from rig.desk.widgets.charts import Band, Canvas, Chart, draw
+from rig.desk.widgets.charts import Band, Canvas, Chart
 from rig.desk.widgets.legend import BAND_SHARE, DASHES, THICK_SHARE, Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
 from rig.desk.widgets.shapes import ElidedLabel, ShapeMark, sized
@@ -192,7 +192,7 @@ class TapView(SavablePlot):
         if curves is None or not len(curves.time_s):
             self.rows.clear()
             for curve in (self.mean, self.fit, self.residual):
-                curve.setData([], [])
+                curve.clear()
             for patch in self.used:
                 patch.setRect(QRectF())
             for chart in (self.above, self.below):
@@ -200,9 +200,9 @@ class TapView(SavablePlot):
             self._show_key(curves)
             return
         self.rows.draw(curves.time_s, curves.low_deg, curves.high_deg)
-        draw(self.mean, curves.mean_time_s, curves.mean_deg)
-        draw(self.fit, curves.model_time_s, curves.model_deg)
-        draw(self.residual, curves.model_time_s, curves.residual_deg)
+        self.mean.draw(curves.mean_time_s, curves.mean_deg)
+        self.fit.draw(curves.model_time_s, curves.model_deg)
+        self.residual.draw(curves.model_time_s, curves.residual_deg)
         x = float(curves.time_s[0]), float(curves.time_s[-1])
         y = _around(np.concatenate((curves.low_deg, curves.high_deg, curves.model_deg)))
         reach = float(np.abs(curves.residual_deg).max()) if len(curves.residual_deg) else 0.0
@@ -242,10 +242,10 @@ class TapView(SavablePlot):
         theme, font = self.theme, self.font()
         metrics = QFontMetricsF(font)
         self.title.setFont(sized(font, 1.0, bold=True))
-        self.rows.setBrush(wash(theme.trace, THICK_SHARE))
-        self.mean.setPen(pen(theme.mean, MEAN_WIDTH * self.pixel))
-        self.fit.setPen(dashed(theme.fit, DASHES["dash"], MODEL_WIDTH * self.pixel))
-        self.residual.setPen(pen(theme.trace))
+        self.rows.set_brush(wash(theme.trace, THICK_SHARE))
+        self.mean.set_pen(pen(theme.mean, MEAN_WIDTH * self.pixel))
+        self.fit.set_pen(dashed(theme.fit, DASHES["dash"], MODEL_WIDTH * self.pixel))
+        self.residual.set_pen(pen(theme.trace))
         for patch in self.used:
             patch.setBrush(wash(theme.band, BAND_SHARE))
         for chart in (self.above, self.below):

@@ -20,7 +20,7 @@ from rig.desk.model.signals import BODY, UNITS, Trace, Traces
 from rig.desk.model.trace_model import TraceSource
 from rig.desk.theme import Theme
 from rig.desk.widgets.axes import pen, wash
-from rig.desk.widgets.charts import Band, Canvas, Chart, draw, zigzag
+from rig.desk.widgets.charts import Band, Canvas, Chart, zigzag
 from rig.desk.widgets.legend import THICK_SHARE, Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
 
@@ -60,39 +60,33 @@ class SignalChart(Chart):
         self.held = False  # its range stays as it is
 
     def set_theme(self, theme: Theme) -> None:
-        self.course.setPen(pen(theme.trace))
-        self.mean.setPen(pen(theme.mean))
-        self.band.setBrush(wash(theme.trace, THICK_SHARE))
+        self.course.set_pen(pen(theme.trace))
+        self.mean.set_pen(pen(theme.mean))
+        self.band.set_brush(wash(theme.trace, THICK_SHARE))
 
     def show_old(self, theme: Theme, old: bool) -> None:
         """A picture that is not of now is pale."""
-        self.course.setPen(pen(theme.rule if old else theme.trace))
-        self.mean.setPen(pen(theme.faint if old else theme.mean))
+        self.course.set_pen(pen(theme.rule if old else theme.trace))
+        self.mean.set_pen(pen(theme.faint if old else theme.mean))
 
     def draw_course(self, trace: Trace, mean: Trace | None) -> None:
-        self._show_band(False)
+        self.band.clear()
         broken = np.zeros(2 * len(trace.broken), bool)
         broken[::2] = trace.broken  # before the column, not inside it
-        draw(self.course, *zigzag(trace.time_s, trace.low, trace.high), broken)
+        self.course.draw(*zigzag(trace.time_s, trace.low, trace.high), broken)
         if mean is None:
-            self.mean.setData([], [])
+            self.mean.clear()
         else:
-            draw(self.mean, mean.time_s, mean.low, mean.broken)
+            self.mean.draw(mean.time_s, mean.low, mean.broken)
 
     def draw_folded(self, folded: FoldedSignal) -> None:
         self.band.draw(folded.phase_deg, folded.low, folded.high)
-        draw(self.course, folded.last_phase_deg, folded.last)
-        draw(self.mean, folded.phase_deg, folded.mean)
-        self._show_band(True)
+        self.course.draw(folded.last_phase_deg, folded.last)
+        self.mean.draw(folded.phase_deg, folded.mean)
 
     def clear(self) -> None:
-        self._show_band(False)
-        self.course.setData([], [])
-        self.mean.setData([], [])
-
-    def _show_band(self, shown: bool) -> None:
-        if self.band.isVisible() != shown:
-            self.band.setVisible(shown)
+        for drawn in (self.band, self.course, self.mean):
+            drawn.clear()
 
     def fit(self, low: float, high: float, at_s: float) -> tuple[float, float] | None:
         """A new range for what is to be seen, or None if it stays."""
