@@ -7,7 +7,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from invented_plots import FLAP_HZ, MIDDLE_RAD, RIPPLE_RAD, block, rig, ring, rows, stream
 
@@ -36,6 +36,7 @@ def body_deg(count: int, first: int = 0) -> np.ndarray:
 # -- columns -------------------------------------------------------------------------------------------
 
 
+@settings(deadline=None)
 @given(st.lists(st.integers(1, 400), min_size=1, max_size=8), st.integers(1, 60), st.integers(0, 2**31))
 def test_columns_hold_the_extremes_however_the_rows_came(sizes: list[int], wide: int, seed: int) -> None:
     """Against extremes of the same rows taken at once with plain numpy."""
@@ -261,6 +262,7 @@ def test_noise_is_not_blown_up() -> None:
     assert kept.high - kept.low >= 2.0 and not kept.take(float("nan"), 1.0, 1.0)
 
 
+@settings(deadline=None)
 @given(st.floats(-1e6, 1e6), st.floats(1e-6, 1e6), st.integers(2, 8))
 def test_numbers_along_a_scale_are_round_and_few(low: float, width: float, most: int) -> None:
     high = low + width
