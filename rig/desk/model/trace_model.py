@@ -41,6 +41,8 @@ Values = NDArray[np.float64]
 #: Columns of a picture unless told otherwise, and how far ahead a stored stream is read.
 COLUMNS = 600
 AHEAD_S = 5.0
+#: As many bins a second as means over turns need: ten or more a turn.
+FINE_PER_S = 500.0
 
 
 class TraceSource(Protocol):
@@ -257,14 +259,15 @@ class StoredSource:
     def _read(self, span_s: float, columns: int, from_s: float, now_s: float) -> None:
         stream, hz = self._stream, self._stream.tick_hz
         step_s = max(span_s / columns, stream.row_period_ticks / hz)
-        to_s = now_s + max(AHEAD_S, span_s)
-        first = stream.first_tick + int(from_s * hz)
+        # No more bins are asked for than there can be, or the rows themselves would be read.
+        to_s = max(now_s, min(now_s + max(AHEAD_S, span_s), stream.duration_s))
+        first = stream.first_tick + int(max(from_s, 0.0) * hz)
         end = stream.first_tick + int(to_s * hz)
         self._by, self._mean = {}, None
         for channel in stream.channels:
             if channel.measures not in UNITS or channel.measures in self._by:
                 continue
-            bins = max(1, int((to_s - from_s) / step_s))
+            bins = max(1, int((to_s - max(from_s, 0.0)) / step_s))
             time_s, low, high = stream.overview(channel.name, first, end, bins)
             middle_s, low, high, starts = columns_of(time_s, low, high, step_s)
             broken = np.zeros(len(middle_s), bool)
@@ -280,10 +283,12 @@ class StoredSource:
         body, crank = channels.measuring(BODY), channels.measuring(CRANK)
         if crank is None:
             return
-        time_s, crank_rad, _ = self._rows(channels[crank], first_tick, end_tick)
-        angle = np.full(len(time_s), np.nan)
+        bins = max(1, int(FINE_PER_S * (end_tick - first_tick) / self._stream.tick_hz))
+        time_s, low, high = self._stream.overview(channels[crank].name, first_tick, end_tick, bins)
+        crank_rad, angle = 0.5 * (low + high), np.full(len(time_s), np.nan)
         if body is not None:
-            angle = self._rows(channels[body], first_tick, end_tick)[1]
+            _, low, high = self._stream.overview(channels[body].name, first_tick, end_tick, bins)
+            angle = 0.5 * (low + high)
         broken = np.zeros(len(time_s), bool)
         broken[self._columns_after_losses(time_s)] = True
         turns = TurnMeans()
