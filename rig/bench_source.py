@@ -33,8 +33,10 @@ def channel_table(rig: RigDescription) -> ChannelTable:
     return ChannelTable(tuple(channel_of(described) for described in rig.channels))
 
 
-def bench_for(rig: RigDescription, clock: Clock) -> Bench:
+def bench_for(rig: RigDescription, clock: Clock, *, watchdog_s: float = 0.2) -> Bench:
     """The rig's bench, not yet opened; compiles its kernels now, never during a run.
+
+    `watchdog_s` is that of a simulated board; a real one brings its own.
 
     BenchMisuse if the rig names no driver known here or cannot be simulated.
     """
@@ -68,6 +70,7 @@ def bench_for(rig: RigDescription, clock: Clock) -> Bench:
         row_hz=rig.sample_hz,
         frame_rows=rig.frame_rows,
         tick_hz=rig.tick_hz,
+        heartbeat_timeout_s=watchdog_s,
         stall_v=limits.stall_v,
         stall_s=limits.stall_s,
         standstill_hz=limits.standstill_hz,

@@ -52,7 +52,10 @@ class Server:
             else:
                 self._clock.sleep_s(turn_s)
             waited_s = min(self._clock.now_s() - before_s, turn_s)
+            pauses, slipped_s = self._pace.pauses, self._pace.slipped_s
             self._pace.turn(waited_s)
+            if self._pace.pauses > pauses:
+                self._tell({"event": "paused", "for_s": round(self._pace.slipped_s - slipped_s, 3)})
             self.turn()
 
     def turn(self) -> None:

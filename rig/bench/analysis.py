@@ -104,7 +104,7 @@ def _rig(header: dict[str, Any], seed: int | None) -> RigDescription:
 
 def main() -> None:
     with suppress(OSError, AttributeError):
-        os.nice(YIELDING)  # whatever it works out can wait for a heartbeat
+        os.setpriority(os.PRIO_PROCESS, 0, YIELDING)  # whatever it works out can wait for a heartbeat
     reader, writer = LineReader(sys.stdin.fileno()), LineWriter(sys.stdout.fileno())
     warm_up()
     writer.send({"warm": True})

@@ -52,7 +52,7 @@ class JournalledAnalysis:
         for verdict in verdicts:
             self.keep(verdict)
         for picture in self._analysis.pictures():
-            self._client.send({"picture": picture})
+            self._client.send_line(picture)
         return verdicts
 
     def keep(self, verdict: Verdict) -> None:

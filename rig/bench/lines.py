@@ -19,8 +19,13 @@ MOST_WAITING = 20_000
 class LineReader:
     """Lines from a descriptor as they come; `ended` once the other side has closed or died."""
 
-    def __init__(self, descriptor: int, heard: Callable[[], None] | None = None) -> None:
+    def __init__(
+        self, descriptor: int, heard: Callable[[], None] | None = None, passed_on: bytes = b""
+    ) -> None:
+        """`heard` is called for every piece that comes. Lines that begin with `passed_on` are not read but given as
+        they are, {"line": bytes}: for whoever only hands them on."""
         self.ended = False
+        self._passed_on = passed_on
         self._descriptor = descriptor
         self._heard = heard or (lambda: None)
         self._lines: queue.SimpleQueue[Fields] = queue.SimpleQueue()
@@ -59,6 +64,9 @@ class LineReader:
             self._heard()
             *whole, rest = (rest + data).split(b"\n")
             for line in whole:
+                if self._passed_on and line.startswith(self._passed_on):
+                    self._lines.put({"line": line})
+                    continue
                 with suppress(ValueError, RecursionError):
                     fields = json.loads(line)
                     if isinstance(fields, dict):
@@ -79,13 +87,16 @@ class LineWriter:
 
     def send(self, fields: Fields, *, droppable: bool = False) -> None:
         """`droppable` lines are left out while the reader is behind: newer ones will tell more."""
+        self.send_line(json.dumps(fields, separators=(",", ":"), default=str).encode(), droppable=droppable)
+
+    def send_line(self, line: bytes, *, droppable: bool = False) -> None:
+        """A line of JSON as it is."""
         if self.gone:
             return
-        line = json.dumps(fields, separators=(",", ":"), default=str).encode() + b"\n"
         with self._change:
             if len(self._waiting) >= (50 if droppable else MOST_WAITING):
                 return
-            self._waiting.append(line)
+            self._waiting.append(line + b"\n")
             self._change.notify()
 
     def close(self, patience_s: float = 2.0) -> None:

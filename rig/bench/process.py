@@ -170,9 +170,6 @@ class Run:
         # Everything loaded so far stays: collecting it again and again would hold up the loop for tens of ms.
         gc.collect()
         gc.freeze()
-        # Where it is allowed: the loop that feeds the heartbeat comes before whatever else this computer does.
-        with suppress(OSError, AttributeError):
-            os.setpriority(os.PRIO_PROCESS, 0, FIRST)
         # The threads of journal and pipes give way to the loop within a millisecond.
         sys.setswitchinterval(1e-3)
         outcome = self.loop.run()
@@ -273,6 +270,10 @@ def one_run(job: Job, control: Control, clock: Clock) -> dict[str, Any]:
 
 def main() -> None:
     """Entry of the process. Standard output belongs to the protocol with the client."""
+    # Where it is allowed, the loop that feeds the heartbeat comes before whatever else this computer does. Before any
+    # thread is made: one of lower rank that holds the interpreter and does not get on would hold up the loop too.
+    with suppress(OSError, AttributeError):
+        os.setpriority(os.PRIO_PROCESS, 0, FIRST)
     clock = HostClock()
     control = Control(sys.stdin.fileno(), os.dup(sys.stdout.fileno()), clock)
     os.dup2(sys.stderr.fileno(), sys.stdout.fileno())  # a stray print must not break the protocol

@@ -20,6 +20,8 @@ STUCK_S = 5.0
 #: The first start on a machine compiles kernels.
 WARM_S = 180.0
 FINISH_S = 600.0
+#: How a line with a picture begins; it is handed on to the client unread.
+PICTURE = b'{"picture":'
 
 
 class AnalysisGone(Exception):
@@ -35,7 +37,7 @@ class RemoteAnalysis:
             [sys.executable, "-m", "rig.bench.analysis"], stdin=subprocess.PIPE, stdout=subprocess.PIPE
         )
         assert self._process.stdin is not None and self._process.stdout is not None
-        self._reader = LineReader(self._process.stdout.fileno(), self._hear)
+        self._reader = LineReader(self._process.stdout.fileno(), self._hear, PICTURE)
         self._writer = LineWriter(self._process.stdin.fileno())
         self._heard_s = clock.now_s()
         self._up_to = 0
@@ -43,7 +45,7 @@ class RemoteAnalysis:
         self._failed = ""
         self.at_tick = 0
         self._warm = False
-        self._pictures: list[dict[str, Any]] = []
+        self._pictures: list[bytes] = []
 
     @property
     def pid(self) -> int:
@@ -66,8 +68,8 @@ class RemoteAnalysis:
         self._heard_s = self._clock.now_s()
         self._writer.send({"journal": str(journal.absolute()), "seed": seed, "pictures": pictures})
 
-    def pictures(self) -> list[dict[str, Any]]:
-        """What has come for a display."""
+    def pictures(self) -> list[bytes]:
+        """What has come for a display, lines of JSON as they came."""
         come, self._pictures = self._pictures, []
         return come
 
@@ -129,8 +131,8 @@ class RemoteAnalysis:
             return verdict_from_json(line["verdict"])
         if "at" in line:
             self.at_tick = int(line["at"])
-        elif "picture" in line:
-            self._pictures.append(line["picture"])
+        elif "line" in line:
+            self._pictures.append(line["line"])
         elif "warm" in line:
             self._warm = True
         elif "result" in line:

@@ -112,6 +112,9 @@ def build() -> argparse.ArgumentParser:
         default=[],
         help="let something go wrong, e.g. 'open_guard at 12 s'; also one a line on standard input",
     )
+    stand_in.add_argument(
+        "--watchdog", metavar="S", type=float, default=0.2, help="patience of its watchdog (default: 0.2 s)"
+    )
     stand_in.add_argument("--log", metavar="FILE", help="what happens at the board, as JSON lines")
 
     desk = made["desk"]

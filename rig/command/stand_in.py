@@ -31,6 +31,8 @@ def main(words: argparse.Namespace) -> Exit:
     rig = with_seed(read_rig(find(words.rig)), words.seed)
     if rig.mechanism is None or rig.unknown:
         raise CommandError(f"{words.rig}: expected constants of the mechanism, so that it can be simulated")
+    if not 0.05 <= words.watchdog <= 10.0:
+        raise CommandError(f"--watchdog {words.watchdog:g}: expected seconds from 0.05 to 10")
     mishaps = _mishaps(words.fault)
     clock = HostClock()
     pace = SlippingClock(clock)
@@ -44,7 +46,7 @@ def main(words: argparse.Namespace) -> Exit:
                 log.flush()
 
         try:
-            bench = bench_for(replace(rig, driver="simulated"), pace)
+            bench = bench_for(replace(rig, driver="simulated"), pace, watchdog_s=words.watchdog)
             board = BoardEnd(bench, pace, tell=tell)
             place: Place = (
                 TcpPlace(words.tcp)

@@ -11,7 +11,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from trials import SPIN, Listener, StandIn, job_for, light_rig, stand_in
+from trials import PATIENT, SPIN, Listener, StandIn, job_for, patient_rig, stand_in
 
 from rig.bench.client import BenchClient
 from rig.command.sessions import software
@@ -36,7 +36,7 @@ zero = "0.2 N"
 
 @pytest.fixture(scope="module")
 def served(tmp_path_factory: pytest.TempPathFactory) -> Iterator[StandIn]:
-    with stand_in(tmp_path_factory.mktemp("stand-in")) as one:
+    with stand_in(tmp_path_factory.mktemp("stand-in"), *PATIENT) as one:
         yield one
 
 
@@ -67,7 +67,7 @@ class Printer:
 
 def test_text_lines_beside_the_board(served: StandIn, tmp_path: Path) -> None:
     printer = Printer()
-    rig = light_rig() + SAMPLER.format(port=printer.port)
+    rig = patient_rig() + SAMPLER.format(port=printer.port)
     with BenchClient(job_for(served, tmp_path / "run.h5", SPIN.replace("60 s", "4 s"), rig=rig)) as client:
         heard = Listener(client)
         heard.wait(lambda: heard.event("drive"), what="the drive")
@@ -93,7 +93,7 @@ def test_text_lines_beside_the_board(served: StandIn, tmp_path: Path) -> None:
 
 def test_a_sampler_that_is_not_there_is_told_before_power(served: StandIn, tmp_path: Path) -> None:
     ons = len(served.of("on"))
-    rig = light_rig() + SAMPLER.format(port=str(tmp_path / "absent"))
+    rig = patient_rig() + SAMPLER.format(port=str(tmp_path / "absent"))
     with BenchClient(job_for(served, tmp_path / "run.h5", rig=rig)) as client:
         heard = Listener(client)
         end = time.monotonic() + 60.0

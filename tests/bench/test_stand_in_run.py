@@ -8,7 +8,7 @@ import sys
 from pathlib import Path
 
 import pytest
-from trials import LIGHT, SPIN, Listener, job_for, light_rig, stand_in, until
+from trials import LIGHT, PATIENT, SPIN, Listener, job_for, light_rig, patient_rig, stand_in, until
 
 from rig.bench.client import BenchClient
 from rig.evaluation.comparison import first_difference, told_verdicts, verdict_difference
@@ -49,10 +49,10 @@ def command(*words: str) -> subprocess.CompletedProcess[str]:
 
 @pytest.mark.parametrize("where", ["pty", "tcp"])
 def test_live_replay_and_analysis_agree(tmp_path: Path, where: str) -> None:
-    words = ("--tcp", "0") if where == "tcp" else ()
+    words = (*PATIENT, "--tcp", "0") if where == "tcp" else PATIENT
     out = tmp_path / "run.h5"
     with stand_in(tmp_path / "served", *words) as served:
-        with BenchClient(job_for(served, out, protocol=SWEEP)) as client:
+        with BenchClient(job_for(served, out, protocol=SWEEP, rig=patient_rig())) as client:
             heard = Listener(client)
             done = heard.wait(lambda: heard.last("done"), at_most_s=150.0, what="the end of the run")
         counts = served.close()

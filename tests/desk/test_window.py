@@ -11,7 +11,7 @@ import pytest
 from PySide6.QtCore import Qt
 from PySide6.QtWidgets import QApplication, QDialog
 from pytestqt.qtbot import QtBot
-from trials import SPIN, StandIn, job_for, stand_in, until
+from trials import PATIENT, SPIN, StandIn, job_for, patient_rig, stand_in, until
 
 from rig.bench.job import Job
 from rig.desk.entry import window as make_window
@@ -52,12 +52,12 @@ def window(qtbot: QtBot, tmp_path: Path, nothing_left: None) -> Iterator[Window]
 
 @pytest.fixture(scope="module")
 def served(tmp_path_factory: pytest.TempPathFactory) -> Iterator[StandIn]:
-    with stand_in(tmp_path_factory.mktemp("stand-in")) as one:
+    with stand_in(tmp_path_factory.mktemp("stand-in"), *PATIENT) as one:
         yield one
 
 
 def spinning(served: StandIn, out: Path, protocol: str = SPIN) -> Job:
-    return job_for(served, out, protocol, pictures=True, may_go_on=True)
+    return job_for(served, out, protocol, rig=patient_rig(), pictures=True, may_go_on=True)
 
 
 def start(window: Window, qtbot: QtBot, job: Job) -> None:
