@@ -24,7 +24,8 @@ from rig.bench.lines import LineReader, LineWriter
 from rig.bench.warming import warm_up
 from rig.description import RigDescription
 from rig.evaluation.analyst import Analyst
-from rig.evaluation.pictures import standing_map, tap_picture, theory_picture
+from rig.evaluation.pictures import standing_map, tap_picture
+from rig.evaluation.theory_picture import theory_picture
 from rig.events import Event
 from rig.files.rig import rig_from_text
 from rig.record import journal as jn

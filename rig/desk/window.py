@@ -106,6 +106,7 @@ class Window(QMainWindow):
         page.run.halted.connect(self.halt)
         page.run.asked.connect(self.ask)
         page.run.tap_wanted.connect(self.show_tap)
+        page.run.said.connect(self.say)
         self.reports = Reports(page.outcome, lambda: self.link.model.session if self.link is not None else "")
         page.outcome.replay.connect(self._replay_last)
         page.outcome.again.connect(self.show_prepare)

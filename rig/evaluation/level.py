@@ -75,7 +75,9 @@ def look_at_end(analysis: VisitAnalysis, store: RowStore, rig: RigDescription) -
 
 def visit_state(analysis: VisitAnalysis) -> tuple[str, str]:
     """State of a visit in one word: what it came to, and whether a held body was lost on the way."""
-    start, end = analysis.start_state or analysis.end_state, analysis.end_state
+    # A visit under way has no end yet: it is what it began as.
+    start = analysis.start_state or analysis.end_state
+    end = analysis.end_state or start
     if start in ("held", "friction_held") and end not in ("held", "friction_held"):
         lost = next((tap for tap in analysis.taps if tap.lost), None)
         how = (

@@ -6,23 +6,20 @@ Plain JSON, a few hundred points each, made by the analysis so that no display h
                    "mean_time_s", "mean_deg": [...]                                 over each turn of the crank
                    "model_time_s", "model_deg", "residual_deg": [...], "from_s", "to_s": interval used}
     map           {"levels": [{LevelResult}], "falling": {...}, "rising": {...}, "fit_curve": [[Hz, 1/s^2, deg]]}
-    theory        {"averaged_fold_hz", "curve": [[Hz, 1/s^2, deg]]}
+    theory        {"averaged_fold_hz", "curve": [[Hz, 1/s^2, deg]]}             (`rig.evaluation.theory_picture`)
 """
 
 from __future__ import annotations
 
-import math
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from analysis.averaged import averaged_fold, equilibrium
 from analysis.boundary.falling import falling_boundary
 from analysis.boundary.rising import rising_boundary
 from analysis.decay.slow import slow_model
 from analysis.position import turn_means
-from rig.description import RigDescription
 from rig.evaluation.analyst import Analyst
 from rig.evaluation.conclusions import fit_curve, told_boundary
 from rig.evaluation.evidence import level_points, rig_constants
@@ -33,7 +30,6 @@ from rig.evaluation.window import window
 Fields = dict[str, Any]
 BEFORE_S, AFTER_S = 0.6, 0.3
 MOST_POINTS = 400
-THEORY_POINTS = 40
 
 
 def tap_picture(store: RowStore, tap: TapAnalysis) -> Fields:
@@ -80,23 +76,6 @@ def standing_map(analyst: Analyst) -> Fields:
         "rising": told_boundary(rising_boundary(points)).to_json(),
         "fit_curve": [list(point) for point in fit_curve(falling, points)],
     }
-
-
-def theory_picture(rig: RigDescription, top_hz: float) -> Fields:
-    """The averaged body's rest from its fold to `top_hz`; empty where a constant is missing."""
-    nothing: Fields = {"averaged_fold_hz": None, "curve": []}
-    if rig.mechanism is None or rig.unknown:
-        return nothing
-    fold = averaged_fold(rig.mechanism)
-    if fold is None:
-        return nothing
-    curve = []
-    if top_hz > fold.flap_hz:
-        for rate in fold.flap_hz + (top_hz - fold.flap_hz) * np.linspace(0.0, 1.0, THEORY_POINTS) ** 2:
-            rest = equilibrium(rig.mechanism, float(rate))
-            if rest is not None:
-                curve.append([rest.flap_hz, rest.stiffness_per_s2, math.degrees(rest.angle_rad)])
-    return {"averaged_fold_hz": fold.flap_hz, "curve": curve}
 
 
 def _bins(rows: int) -> NDArray[np.intp]:

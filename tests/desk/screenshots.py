@@ -90,7 +90,7 @@ class Studio:
         page.status.set_link(8.0, player.rig.sample_hz)
         page.refresh(model, EVERYTHING)
         window.outcome.refresh(model)
-        window.pages.setCurrentWidget(window.bench_page)
+        window.pages.setCurrentWidget(window.bench)
         page.traces.tick()
 
     def refresh(self) -> None:

@@ -6,15 +6,14 @@ What the run told is in the session: events, verdicts, results. So a jump costs 
 from __future__ import annotations
 
 import bisect
+import math
 from collections.abc import Sequence
 from typing import Any
 
-from analysis.decay.result import NAN
 from rig.desk.model.run_model import Changed, RunModel
 from rig.evaluation.comparison import told_verdicts
-from rig.evaluation.pictures import BEFORE_S, tap_picture, theory_picture
 from rig.evaluation.stream import RowStore
-from rig.evaluation.tap import analyse_tap
+from rig.evaluation.theory_picture import theory_picture
 from rig.evaluation.timeline import Timeline
 from rig.events import Event
 from rig.session import Session
@@ -144,6 +143,10 @@ class ReplayModel:
 
     def picture(self, number: int) -> Fields | None:
         """The picture of a tap, fitted when first asked for; None if there is no such tap."""
+        # Late: the fits take a second to load, and a session is to be there at once.
+        from rig.evaluation.pictures import BEFORE_S, tap_picture
+        from rig.evaluation.tap import analyse_tap
+
         if number not in self._taps:
             visit = self._timeline.tap(number)
             if visit is None:
@@ -168,7 +171,7 @@ def _lines(events: Sequence[Event], verdicts: Sequence[Fields]) -> list[tuple[in
 
 def _place(level: Fields, ended: set[tuple[str, float]]) -> bool:
     drive = level["drive_v"]["value"]
-    volts = NAN if drive is None else float(drive)
+    volts = math.nan if drive is None else float(drive)
     # The told drive is the measured voltage, the level's name the one asked for.
     return any(direction == level["direction"] and abs(asked - volts) < 0.1 for direction, asked in ended)
 

@@ -22,6 +22,7 @@ from rig.desk.model.run_model import (
     TAP,
     TRIP,
     Changed,
+    Rung,
     RunModel,
 )
 from rig.desk.model.trace_model import RingSource, StoredSource
@@ -46,6 +47,7 @@ class RunPage(QWidget):
     halted = Signal()
     asked = Signal(str)  # an input of the operator: acknowledge, redo, reject, next, go_on, end
     tap_wanted = Signal(int)
+    said = Signal(str)  # a sentence for the foot of the window
 
     def __init__(self, theme: Theme, parent: QWidget | None = None) -> None:
         super().__init__(parent)
@@ -55,6 +57,7 @@ class RunPage(QWidget):
         self._since = QElapsedTimer()
         self._since.start()
         self._live = False
+        self._rungs: list[Rung] = []
         self.halt = HaltStrip(theme)
         self.status = StatusLine(theme)
         self.prompt = PromptBanner(theme)
@@ -111,6 +114,10 @@ class RunPage(QWidget):
             signal.connect(lambda kind=kind: self.asked.emit(kind))
         self.ladder.tap_chosen.connect(self.tap_wanted)
         self.tap.chosen.connect(self.tap_wanted)
+        self.map.level_chosen.connect(self._level_chosen)
+        for plot in (self.traces, self.tap, self.map):
+            plot.failed.connect(self.said)
+            plot.saved.connect(lambda path: self.said.emit(f"Saved as {path}"))
 
     def set_theme(self, theme: Theme) -> None:
         for part in self._parts:
@@ -154,6 +161,17 @@ class RunPage(QWidget):
         if self._row_hz is not None and self._live:
             self.status.set_link(float(self._since.elapsed()), self._row_hz)
 
+    def _level_chosen(self, direction: str, drive_v: float) -> None:
+        """A point of the map was chosen: its last tap is shown beside it."""
+        taps = [
+            mark.tap
+            for rung in self._rungs
+            if rung.direction == direction and abs(rung.drive_v - drive_v) < 1e-6
+            for mark in rung.taps
+        ]
+        if taps:
+            self.tap_wanted.emit(taps[-1])
+
     def set_replay(self, replay: bool) -> None:
         """A replay has no drive to take away."""
         self.halt.setVisible(not replay)
@@ -166,6 +184,7 @@ class RunPage(QWidget):
         if model.tick != self._tick:
             self._tick = model.tick
             self._since.restart()
+        self._rungs = model.rungs
         self._live = model.phase not in ("idle", "starting", "finished", "failed")
         if changed & {STANDING, PHASE, OUTCOME}:
             self.status.refresh(model)
