@@ -183,7 +183,7 @@ def main() -> None:
     states = tuple(sys.argv[2:]) or STATES
     if "QT_SCALE_FACTOR" in os.environ:
         pictures(folder, states)
-        return
+        os._exit(0)  # as the window itself ends, see rig.desk.entry
     import subprocess
 
     # The scale holds for a whole process.

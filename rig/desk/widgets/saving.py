@@ -186,8 +186,8 @@ class SavablePlot(QWidget):
     # -- what a plot gives -----------------------------------------------------------------------------
 
     def values(self) -> list[Column]:
-        """What is drawn just now, as columns."""
-        raise NotImplementedError
+        """What is drawn just now, as columns; a plot that shows nothing has none."""
+        return []
 
     def more_actions(self, menu: QMenu, place: QPoint) -> None:
         """Add what else can be done where the menu was asked for (place in `body`)."""
