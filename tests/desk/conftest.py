@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import os
 import sys
 import threading
@@ -12,6 +13,10 @@ from pathlib import Path
 import pytest
 
 os.environ.setdefault("QT_QPA_PLATFORM", "offscreen")
+
+from PySide6.QtCore import QEvent
+from PySide6.QtWidgets import QApplication
+
 for folder in (Path(__file__).parent, Path(__file__).parents[1] / "bench"):
     sys.path.insert(0, str(folder))
 
@@ -28,6 +33,19 @@ def _own_folders(tmp_path_factory: pytest.TempPathFactory) -> Iterator[None]:
             del os.environ[name]
         else:
             os.environ[name] = value
+
+
+@pytest.fixture(autouse=True)
+def _taken_apart_in_order() -> Iterator[None]:
+    """What a test asked the toolkit to delete is deleted after it, not when the collector happens to come by.
+
+    Nothing here runs an event loop from outside, and without one `deleteLater` waits for ever.
+    """
+    yield
+    app = QApplication.instance()
+    if app is not None:
+        app.sendPostedEvents(None, QEvent.Type.DeferredDelete)
+        gc.collect(1)
 
 
 def own_children() -> set[int]:

@@ -155,8 +155,9 @@ def test_the_end_stops_are_lines_of_the_body(live: TracesView) -> None:
 
 def test_signals_can_be_left_out_and_taken_in(live: TracesView) -> None:
     menu = live.menu(QPoint(300, 60))
-    assert "Hold the range of body angle" in [action.text() for action in menu.actions()]
-    (signals,) = [action.menu() for action in menu.actions() if action.text() == "Signals shown"]
+    actions = menu.actions()  # kept: some versions of the bindings let a submenu go with its action's wrapper
+    assert "Hold the range of body angle" in [action.text() for action in actions]
+    (signals,) = [action.menu() for action in actions if action.text() == "Signals shown"]
     assert isinstance(signals, QMenu)
     by_name = {action.text(): action for action in signals.actions()}
     by_name["flap rate"].trigger()
