@@ -11,33 +11,19 @@ from numpy.typing import ArrayLike, NDArray
 from analysis.decay.driven import fit_driven
 from analysis.decay.fit import fit_decay
 from analysis.decay.record import TapRecord, checked, quiet_record
-from analysis.decay.result import NAN, NORMAL_95, DecayFit, mode_frequency, stiffness_std
+from analysis.decay.result import NAN, NORMAL_95, DecayFit, SlowMode, mode_frequency, stiffness_std
 
 FloatArray = NDArray[np.float64]
 
 
 @dataclass(frozen=True)
-class LevelDecay:
-    """Slow mode of a level; fields as in `DecayFit`, at vanishing amplitude where `extrapolated`.
+class LevelDecay(SlowMode):
+    """Slow mode of a level; at vanishing amplitude where `extrapolated`.
 
     taps: records used of those given; softening_per_rad2: relative change of stiffness with amplitude squared.
     status: "ok", "overdamped", "not_identifiable", "no_signal" (no usable tap).
     """
 
-    status: str
-    reason: str = ""
-    decay_per_s: float = NAN
-    decay_std_per_s: float = NAN
-    decay_low_per_s: float = NAN
-    decay_high_per_s: float = NAN
-    mode_hz: float = NAN
-    mode_std_hz: float = NAN
-    mode_low_hz: float = NAN
-    mode_high_hz: float = NAN
-    stiffness_per_s2: float = NAN
-    stiffness_std_per_s2: float = NAN
-    stiffness_low_per_s2: float = NAN
-    stiffness_high_per_s2: float = NAN
     ambient_rms_rad: float = NAN
     taps: int = 0
     extrapolated: bool = False

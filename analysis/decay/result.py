@@ -14,20 +14,12 @@ NORMAL_95 = 1.959964
 
 
 @dataclass(frozen=True)
-class DecayFit:
-    """Decay of the slow mode in one record, with 95 % limits.
+class SlowMode:
+    """What is known of the slow mode, with 95 % limits; NaN where nothing is.
 
     decay_per_s sigma, positive when it decays; mode_hz damped frequency (0 when the poles are real);
     stiffness_per_s2 kappa = omega_d^2 + sigma^2 per unit inertia, negative when the body diverges.
-    amplitude_rad, phase_rad: A exp(-sigma t) cos(omega t + phase) at the start of the record;
-    v0_rad_per_s: angular rate of the mode there. covariance (2, 2): of (sigma, omega_d^2).
-
-    status: "ok"; "overdamped" (two real poles, both seen); "not_identifiable" (numbers given, but the record
-    does not pin down a second-order mode: one real pole, or less than it takes to tell decay from drift);
-    "no_signal" (no free swing above the noise); "contact" (a sample lies on an end stop); "too_short".
-    The last three carry no decay rate: NaN. `reason` says it in words; `remarks` are doubts that do not stop
-    a fit ("two_modes", "amplitude_dependent", "friction_like").
-    interval: which noise model set the width: "white", "robust" or "driven".
+    `status` in one word, `reason` in a sentence.
     """
 
     status: str
@@ -44,6 +36,23 @@ class DecayFit:
     stiffness_std_per_s2: float = NAN
     stiffness_low_per_s2: float = NAN
     stiffness_high_per_s2: float = NAN
+
+
+@dataclass(frozen=True)
+class DecayFit(SlowMode):
+    """Decay of the slow mode in one record.
+
+    amplitude_rad, phase_rad: A exp(-sigma t) cos(omega t + phase) at the start of the record;
+    v0_rad_per_s: angular rate of the mode there. covariance (2, 2): of (sigma, omega_d^2).
+
+    status: "ok"; "overdamped" (two real poles, both seen); "not_identifiable" (numbers given, but the record
+    does not pin down a second-order mode: one real pole, or less than it takes to tell decay from drift);
+    "no_signal" (no free swing above the noise); "contact" (a sample lies on an end stop); "too_short".
+    The last three carry no decay rate: NaN. `reason` says it in words; `remarks` are doubts that do not stop
+    a fit ("two_modes", "amplitude_dependent", "friction_like").
+    interval: which noise model set the width: "white", "robust" or "driven".
+    """
+
     amplitude_rad: float = NAN
     phase_rad: float = NAN
     v0_rad_per_s: float = NAN

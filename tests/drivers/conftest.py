@@ -1,6 +1,7 @@
-"""Makes the conformance suite and the simulated rigs of this folder importable, whatever the import mode."""
+"""Makes the conformance suite, the simulated rigs and their mechanisms importable, whatever the import mode."""
 
 import sys
 from pathlib import Path
 
-sys.path.insert(0, str(Path(__file__).parent))
+for folder in (Path(__file__).parent, Path(__file__).parents[1] / "mechanism"):
+    sys.path.insert(0, str(folder))

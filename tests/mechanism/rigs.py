@@ -11,8 +11,8 @@ TABLE_COPPER_PER_K = 0.00393
 
 BOOM = Mechanism(
     carriage=Carriage.FLOATING,
-    body_mass_kg=0.0720,
-    cm_height_m=0.0300,
+    body_mass_kg=0.072,
+    cm_height_m=0.030,
     cm_forward_m=0.000711,
     body_inertia_kg_m2=1.5416e-4,
     carriage_mass_kg=0.130,
@@ -50,8 +50,8 @@ GEARED = BOOM.with_(
 UNSHAKEN = BOOM.with_(carriage=Carriage.CLAMPED)
 COLUMN = Mechanism(
     carriage=Carriage.GEARED,
-    body_mass_kg=0.0300,
-    cm_height_m=0.0620,
+    body_mass_kg=0.030,
+    cm_height_m=0.062,
     cm_forward_m=0.0,
     body_inertia_kg_m2=1.488e-4,
     carriage_mass_kg=0.040,
