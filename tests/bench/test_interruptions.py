@@ -10,7 +10,7 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from interruptions import INTERRUPTIONS
+from interruptions import INTERRUPTIONS, interrupt
 from trials import StandIn, stand_in
 
 
@@ -23,4 +23,4 @@ def served(tmp_path_factory: pytest.TempPathFactory) -> Iterator[StandIn]:
 @pytest.mark.parametrize("name", INTERRUPTIONS)
 def test_interrupted(served: StandIn, tmp_path: Path, name: str) -> None:
     wait_s = random.Random(name).uniform(0.0, 1.0)
-    INTERRUPTIONS[name](served, tmp_path, wait_s)
+    interrupt(name, served, tmp_path, wait_s)

@@ -35,7 +35,7 @@ def test_a_full_disk_ends_the_run_and_keeps_what_is_good(served: StandIn, tmp_pa
     out, journal = tmp_path / "run.h5", tmp_path / "run.journal"
     offs = len(served.of("off"))
     with BenchClient(job_for(served, out)) as client:
-        heard = spin_up(client, served)
+        heard = spin_up(client, served, offs)
         heard.wait(lambda: (heard.last("standing") or {}).get("committed_sequence", 0) > 50, what="some rows")
         room = journal.stat().st_size + 30_000
         resource.prlimit(client.pid, resource.RLIMIT_FSIZE, (room, room))

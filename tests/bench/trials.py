@@ -179,12 +179,33 @@ class Listener:
         return until(look, at_most_s, what)
 
 
-def spin_up(client: BenchClient, served: StandIn) -> Listener:
-    """Wait until the drive of a run is up; what was heard until then."""
+class Starved(Exception):
+    """The machine kept a process waiting so long that the board switched off: nothing was tried.
+
+    Safe, as it must be, and no finding of a trial that is about something else.
+    """
+
+
+def spin_up(client: BenchClient, served: StandIn, offs: int) -> Listener:
+    """Wait until the drive of a run is up, after `offs` earlier ends; what was heard until then."""
     heard = Listener(client)
-    heard.wait(lambda: heard.event("drive"), what="the drive")
-    until(lambda: served.is_on, what="the power stage")
+    heard.wait(lambda: heard.event("drive") or heard.last("done"), what="the drive")
+    until(lambda: served.is_on or served.of("off")[offs:] or heard.last("done"), what="the power stage")
+    still_on(served, offs)
     return heard
+
+
+def still_on(served: StandIn, offs: int) -> None:
+    """Starved if the drive has ended, or was refused by a latch, before anything was done to it."""
+    if served.of("off")[offs:] or not served.is_on:
+        raise Starved("the drive was off before anything was interrupted")
+
+
+def outlasted(served: StandIn, since: int) -> None:
+    """Starved if the board stopped the drive by itself although the bench process was there to do it."""
+    told = served.told()[since:]
+    if any(line["event"] == "latch" and line.get("cause") == "watchdog" for line in told):
+        raise Starved("the board's watchdog was faster than the bench process")
 
 
 def switched_off(served: StandIn, before: int = 0, at_most_s: float = 60.0) -> dict[str, Any]:
