@@ -12,6 +12,7 @@ quiet_end       level, writes
 tap             tap, level, impulse_n_m_s, by
 tap_end         tap, level, writes         the observation ends; writes to the locked drive register
 tap_excluded    tap, reason
+tap_reason      tap, reason                why a tap was left out, told after it was: in place of what was written
 observe         level                      locked record without a tap begins
 observe_end     level, writes
 level_end       level
@@ -28,7 +29,7 @@ turning         -                          drive is off, the crank still turns
 standstill      coast_s
 waiting         -                          after a trip or a halt: for the operator to go on or to end
 rearmed         by                         the operator goes on
-refused         reason                     the board does not let itself be armed
+refused         reason                     the board does not let itself be armed, or an input was for nothing
 loss            rows, frames, overruns
 notice          anything the board told
 clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s   board clock against host clock;
@@ -48,7 +49,7 @@ KINDS = frozenset(
         "run", "armed", "drive", "level", "settled", "quiet", "quiet_end", "tap", "tap_end", "tap_excluded",
         "observe", "observe_end", "level_end", "release", "release_end", "mark", "sync", "zero", "prompt",
         "acknowledged", "trip", "halt", "turning", "standstill", "loss", "notice", "clock", "finished",
-        "waiting", "rearmed", "refused",
+        "waiting", "rearmed", "refused", "tap_reason",
     )
 )  # fmt: skip
 
@@ -63,6 +64,7 @@ READ: dict[str, dict[str, type | UnionType]] = {
     "quiet_end": {"writes": int | None},
     "observe_end": {"writes": int | None},
     "tap_excluded": {"tap": int, "reason": str},
+    "tap_reason": {"tap": int, "reason": str},
     "zero": {"load_n": int | float | None, "load_std_n": int | float | None},
 }
 

@@ -133,6 +133,8 @@ class Analyst:
             return self._tap(event)
         elif event.kind == "tap_excluded":
             self._exclude(event)
+        elif event.kind == "tap_reason":
+            self._again(event)
         elif event.kind in ("level_end", "trip", "halt", "finished"):
             return self._close_visits()
         return []
@@ -158,15 +160,22 @@ class Analyst:
         return [verdict, self._level_verdict(event.tick)]
 
     def _exclude(self, event: Event) -> None:
-        """A tap taken back after it was analysed is analysed again, as excluded."""
+        """A tap taken back after it was analysed leaves the fit of its level too."""
+        for analysis in self._again(event):
+            self._fits.pop(self._key(analysis), None)
+            if analysis.visit.level in self._closed:
+                self._fit(analysis)
+
+    def _again(self, event: Event) -> list[VisitAnalysis]:
+        """A tap of which something was told after it was analysed is analysed again; the visits it was in."""
         visit = self.timeline.tap(int(event.data["tap"]))
+        found = []
         for analysis in self.visits:
             for index, tap in enumerate(analysis.taps):
                 if visit is not None and tap.result.tap == visit.tap:
                     analysis.taps[index] = analyse_tap(self.store, visit, self.rig)
-                    self._fits.pop(self._key(analysis), None)
-                    if analysis.visit.level in self._closed:
-                        self._fit(analysis)
+                    found.append(analysis)
+        return found
 
     def _level_verdict(self, tick: int) -> LevelVerdict:
         current = self.visits[-1]

@@ -87,6 +87,10 @@ class Timeline:
             excluded = self.tap(int(data["tap"]))
             if excluded is not None:
                 excluded.excluded = str(data["reason"])
+        elif event.kind == "tap_reason":
+            excluded = self.tap(int(data["tap"]))
+            if excluded is not None and excluded.excluded:  # it leaves nothing out by itself
+                excluded.excluded = str(data["reason"])
         elif level is not None:
             self._add_within(level, event)
 

@@ -16,6 +16,7 @@ from rig.run import commands as cm
 from rig.run.going_on import from_the_drive
 from rig.run.inputs import OperatorInput
 from rig.run.knowledge import Knowledge
+from rig.run.left_out import LeftOut
 from rig.run.zero import ZeroMeans
 from rig.verdicts import Verdict
 
@@ -65,7 +66,7 @@ class Walker:
         self._tries = 0
         self._taps = 0
         self._last_tap: tuple[int, ac.Action] | None = None  # level and action of the last tap
-        self._excluded = -1  # the last tap the operator threw out
+        self._left_out = LeftOut()
         self._strike_from: int | None = None  # of the tap now observed
         self._sign = 1.0
         self._acknowledged = False
@@ -248,13 +249,13 @@ class Walker:
         here = self._level is not None and self._level.level == self._enough
         return here and not isinstance(action, ac.GoTo | ac.BeginLevel | ac.EndLevel)
 
+    def reasons(self, operator: Sequence[OperatorInput]) -> list[cm.Command]:
+        """Why taps were left out: that can be told in any state of a run."""
+        return [self._left_out.tell(one) for one in operator if one.kind == "reason"]
+
     def _exclude(self, reason: str) -> list[cm.Command]:
         """Leave the last tap out, once."""
-        number = self._taps - 1
-        if self._last_tap is None or number == self._excluded:
-            return []
-        self._excluded = number
-        return [cm.Record("tap_excluded", {"tap": number, "reason": reason})]
+        return [] if self._last_tap is None else self._left_out.exclude(self._taps - 1, reason)
 
     def _redo(self, reason: str) -> list[cm.Command]:
         """Exclude the last tap, and give it again while its level lasts."""

@@ -98,9 +98,23 @@ class Runner:
         `flap_hz` is the crank's present rate; `done` are the events the last commands became, with the ticks
         at which they took effect.
         """
-        tick = int(block.tick[-1])
         if self.state == FINISHED:
             return []
+        made = self._advance(block, flap_hz, verdicts, trips, operator, done)
+        if self.state == FINISHED:
+            return made  # nothing is written after a run's end
+        return made + self._walker.reasons(operator)
+
+    def _advance(
+        self,
+        block: RowBlock,
+        flap_hz: float,
+        verdicts: Sequence[Verdict],
+        trips: Sequence[Trip],
+        operator: Sequence[OperatorInput],
+        done: Sequence[Event],
+    ) -> list[cm.Command]:
+        tick = int(block.tick[-1])
         if trips and self.state not in (TURNING, WAITING):
             return self._trip(tick, trips)
         ends = [one for one in operator if one.kind in ("halt", "stop")]

@@ -14,23 +14,33 @@ from rig.run.inputs import OperatorInput
 from rig.shipped import find
 
 
-class HaltsAfter:
-    """An operator who throws a tap out in one frame and halts in a later one."""
+class Does:
+    """An operator who does something in some frames."""
 
-    def __init__(self, redo: int, halt: int) -> None:
+    def __init__(self, does: dict[int, OperatorInput]) -> None:
         self._frame = 0
-        self._does = {redo: "redo", halt: "halt"}
+        self._does = does
 
     def inputs(self) -> Sequence[OperatorInput]:
         self._frame += 1
-        kind = self._does.get(self._frame)
-        return [OperatorInput(kind)] if kind else []
+        one = self._does.get(self._frame)
+        return [one] if one else []
 
     def prompt(self, text: str) -> None:
         pass
 
 
 KINDS = ("lossy", "every-step", "halted")
+#: The first tap is given again, and that one thrown out. Why is told while the next tap is watched, while the tap
+#: itself is, and once more when the level is over.
+HALTED = {
+    700: OperatorInput("redo"),
+    720: OperatorInput("reason", "struck twice"),
+    750: OperatorInput("reject"),
+    760: OperatorInput("reason", "the cable was touched"),
+    1200: OperatorInput("reason", "too hard", tap=0),
+    1400: OperatorInput("halt"),  # on the next level
+}
 
 
 def make(kind: str, path: Path) -> Path:
@@ -41,7 +51,7 @@ def make(kind: str, path: Path) -> Path:
     if kind == "lossy":
         rig = replace(rig, world=replace(rig.world, lost_frame_probability=0.002))
     elif kind == "halted":
-        operator = HaltsAfter(700, 1400)  # in the second tap's observation, and on the next level
+        operator = Does(HALTED)
     protocol = read_protocol(find("every-step" if kind == "every-step" else "quick"), rig)
     run_session(rig, protocol, path, VirtualClock(), pace="fast", operator=operator)
     return path

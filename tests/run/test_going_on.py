@@ -127,6 +127,82 @@ def test_a_rejected_tap_is_not_given_again() -> None:
     assert len(run.book.of("tap")) == 4
 
 
+def reasons(run: Run) -> list[tuple[int, str]]:
+    return [(event.data["tap"], event.data["reason"]) for event in run.book.of("tap_reason")]
+
+
+def test_why_a_tap_was_left_out_is_told_after_it_was() -> None:
+    """Without a number it is the last one left out; the course goes on as if nothing had been said."""
+    acts = {8.0: OperatorInput("reject"), 8.5: OperatorInput("reason", "struck twice")}
+    run, silent = (go([staircase()], answer=held, acts=dict(list(acts.items())[:n])) for n in (2, 1))
+    (excluded,) = run.book.of("tap_excluded")
+    assert excluded.data["reason"] == "rejected by the operator"
+    assert reasons(run) == [(excluded.data["tap"], "struck twice")]
+    kinds = [kind for kind in run.book.kinds() if kind != "tap_reason"]
+    assert kinds == silent.book.kinds() and run.outcome == silent.outcome
+
+
+def test_a_reason_names_its_tap_and_may_be_changed() -> None:
+    """The tap that is given again is under way, or taken back too, when the words for the first one come."""
+    run = go(
+        [staircase(taps_n_m_s=(1e-4,) * 3, tap_observe_s=3.0)],
+        answer=held,
+        acts={
+            6.0: OperatorInput("redo"),
+            7.0: OperatorInput("reject"),
+            7.5: OperatorInput("reason", "the cable was touched", tap=0),
+            7.6: OperatorInput("reason", "too hard"),
+            7.7: OperatorInput("reason", "wrong way", tap=0),
+        },
+    )
+    assert [event.data["tap"] for event in run.book.of("tap_excluded")] == [0, 1]
+    assert reasons(run) == [(0, "the cable was touched"), (1, "too hard"), (0, "wrong way")]
+
+
+def test_a_reason_in_the_same_frame_as_its_tap_is_taken() -> None:
+    acts = {7.999: OperatorInput("reject"), 8.0: OperatorInput("reason", "too gentle")}
+    run = go([staircase()], answer=held, acts=acts)
+    assert [words for _, words in reasons(run)] == ["too gentle"]
+    assert run.book.of("tap_reason")[0].tick == run.book.of("tap_excluded")[0].tick
+
+
+def test_a_reason_for_nothing_is_refused_in_a_note() -> None:
+    run = go(
+        [staircase()],
+        answer=held,
+        acts={
+            7.0: OperatorInput("reason", "too hard"),  # nothing is left out yet
+            8.0: OperatorInput("reject"),
+            8.2: OperatorInput("reason", "too hard", tap=77),
+            8.4: OperatorInput("reason", ""),
+        },
+    )
+    assert reasons(run) == [] and run.outcome.exit_code == 0
+    told = [event.data["reason"] for event in run.book.of("refused")]
+    assert len(told) == 3 and "no tap has been left out" in told[0]
+    assert "tap 77 has not been left out" in told[1] and "without words" in told[2]
+
+
+def test_a_reason_is_taken_while_the_run_waits_after_a_halt() -> None:
+    run = go(
+        [staircase()],
+        answer=held,
+        acts={
+            5.0: OperatorInput("reject"),
+            5.2: OperatorInput("halt"),
+            5.3: OperatorInput("reason", "wrong way"),  # the crank still turns
+            40.0: OperatorInput("reason", "too hard"),
+            41.0: OperatorInput("end"),
+        },
+        may_go_on=True,
+    )
+    assert [words for _, words in reasons(run)] == ["wrong way", "too hard"]
+    ticks = {kind: run.book.of(kind)[0].tick for kind in ("halt", "standstill", "waiting")}
+    first, second = (event.tick for event in run.book.of("tap_reason"))
+    assert ticks["halt"] < first < ticks["standstill"] and ticks["waiting"] < second
+    assert run.book.kinds()[-1] == "finished"
+
+
 def test_where_a_course_goes_on() -> None:
     ramp, other = ac.GoTo(to_v=1.0, slew_v_per_s=1.0), ac.GoTo(to_v=2.0, slew_v_per_s=1.0)
     level = ac.BeginLevel(level=0, direction="rising", drive_v=1.0, role="level")

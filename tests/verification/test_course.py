@@ -42,7 +42,7 @@ def made(text: str) -> list[Event]:
         "level0 tap0 mark notice loss prompt tap_excluded0 halt turning standstill finished",  # cut short
         "level0 quiet0 trip halt trip finished",
         "level0 tap0",  # cut off
-        "level0 tap0 tap_end0 tap_excluded0 tap1 tap_end1 level_end0 halt!",
+        "level0 tap0 tap_end0 tap_excluded0 tap1 tap_reason0 tap_end1 level_end0 halt!",
     ],
 )
 def test_what_a_run_writes(text: str) -> None:
@@ -115,6 +115,7 @@ def test_losses_told_and_counted() -> None:
         ("level", {"level": 0.5, "direction": "rising", "drive_v": 3}, "level"),
         ("tap", {"tap": 0, "impulse_n_m_s": "1"}, "impulse_n_m_s"),
         ("tap_excluded", {"tap": 0}, "reason"),
+        ("tap_reason", {"tap": None, "reason": "too hard"}, "tap"),
         ("quiet_end", {"writes": "none"}, "writes"),
     ],
 )
