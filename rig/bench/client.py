@@ -48,9 +48,10 @@ class BenchClient:
         """A sign of life."""
         self._writer.send({"here": 1}, droppable=True)
 
-    def input(self, kind: str, reason: str = "") -> None:
+    def input(self, kind: str, reason: str = "", tap: int | None = None) -> None:
         """Halt, acknowledge and so on: see `rig.run.inputs`."""
-        self._writer.send({"input": kind, "reason": reason})
+        named = {} if tap is None else {"tap": tap}
+        self._writer.send({"input": kind, "reason": reason, **named})
 
     def messages(self) -> list[dict[str, Any]]:
         """What has come."""

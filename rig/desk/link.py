@@ -41,9 +41,9 @@ class BenchLink(QObject):
         """Whether the bench process has ended."""
         return self._over
 
-    def send(self, kind: str, reason: str = "") -> None:
+    def send(self, kind: str, reason: str = "", tap: int | None = None) -> None:
         """An input of the operator; see `rig.run.inputs`."""
-        self._client.input(kind, reason)
+        self._client.input(kind, reason, tap)
 
     def halt(self) -> None:
         self.send("halt")
