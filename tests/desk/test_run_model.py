@@ -120,6 +120,51 @@ def test_levels_taps_and_their_outcomes() -> None:
     assert "levels" in changed and model.on_hand is None
 
 
+def left_out(*lines: dict[str, Any]) -> RunModel:
+    """A run whose first tap is taken back, and what comes then."""
+    model = begun()
+    told(model, event(5.0, "tap", tap=0, level=0, impulse_n_m_s=1e-4, by="tapper"))
+    told(model, event(6.0, "tap_excluded", tap=0, reason="rejected by the operator"), *lines)
+    return model
+
+
+def test_why_a_tap_was_left_out_stands_against_a_verdict_that_comes_late() -> None:
+    """The analysis judges the tap as it was known at its end; what was said since is newer."""
+    late = tap_verdict(0, accepted=False, reason="excluded by the operator: rejected by the operator")
+    model = left_out(event(6.5, "tap_reason", tap=0, reason="too hard"), late)
+    mark = model.tap(0)
+    assert mark is not None and (mark.outcome, mark.reason) == ("excluded", "too hard")
+    assert mark.decay_per_s is not None and model.unexplained is None
+
+
+def test_a_reason_is_asked_for_until_it_is_late() -> None:
+    again = event(6.1, "tap", tap=1, level=0, impulse_n_m_s=1e-4, by="tapper")
+    assert begun().unexplained is None
+    assert left_out().unexplained == left_out(tap_verdict(0, accepted=False), again).unexplained == 0
+    assert left_out(again, tap_verdict(1)).unexplained is None
+    assert left_out(event(7.0, "level_end", level=0)).unexplained == 0
+    more = event(8.0, "level", level=1, direction="rising", drive_v=5.0)
+    assert left_out(event(7.0, "level_end", level=0), more).unexplained is None
+    second = event(7.0, "tap_excluded", tap=1, reason="rejected by the operator")
+    both = left_out(again, second, event(7.5, "tap_reason", tap=0, reason="too hard"))
+    assert both.unexplained == 1  # a word for the tap before is no word for this one
+
+
+def test_a_reason_alone_leaves_no_tap_out() -> None:
+    model = begun()
+    told(model, event(5.0, "tap", tap=0, level=0, impulse_n_m_s=1e-4, by="tapper"))
+    told(model, tap_verdict(0), event(6.0, "tap_reason", tap=0, reason="too hard"))
+    told(model, event(6.0, "tap_reason", tap=9, reason="too hard"))
+    assert (model.tap(0).outcome, model.tap(0).reason) == ("accepted", "came back")  # type: ignore[union-attr]
+
+
+def test_what_was_refused_is_among_the_notes() -> None:
+    model = begun()
+    told(model, event(6.0, "refused", reason="tap 7 has not been left out"))
+    assert "standing" in told(model, {"refused": "a reason must have words"})
+    assert [words for _, words in model.notes] == ["tap 7 has not been left out", "a reason must have words"]
+
+
 def test_conditions_belong_to_the_level_at_hand() -> None:
     model = begun()
     condition = {"kind": "condition", "mean_angle_rad": 0.1, "state": "held", "settled": True}

@@ -6,8 +6,10 @@ redraws no more than it must.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
 from typing import Any
+
+from rig.desk.model.notices import notice_words
+from rig.desk.model.rungs import Rung, TapMark, Tripped
 
 Fields = dict[str, Any]
 
@@ -38,58 +40,6 @@ PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME = (
 Changed = set[str]
 EVERYTHING: Changed = {PHASE, STANDING, LEVELS, TAP, MAP, TRIP, PROMPT, OUTCOME}
 
-#: Notices of a board in an operator's words; those of no use to one are left out.
-NOTICES = {
-    "latch": "the board switched off by itself",
-    "index_slip": "the index pulse came at another count: an encoder disc slips",
-    "damaged_bytes": "bytes damaged on the line",
-    "damaged_frame": "a frame damaged on the line",
-    "sampler": "",
-}
-SILENT = ("index", "sync_edge")
-
-
-@dataclass
-class TapMark:
-    """One tap on its level. `outcome`: observed, accepted, double, lost, left_out or excluded."""
-
-    tap: int
-    level: int
-    tick: int
-    by: str
-    impulse_n_m_s: float | None
-    outcome: str = "observed"
-    reason: str = ""
-    decay_per_s: float | None = None
-    decay_std_per_s: float | None = None
-
-
-@dataclass
-class Rung:
-    """One level as visited."""
-
-    level: int
-    direction: str
-    drive_v: float
-    role: str
-    tick: int
-    taps: list[TapMark] = field(default_factory=list)
-    flap_hz: float | None = None
-    state: str = ""
-    regime: str = ""
-    half_width_per_s: float | None = None
-    settled: bool = False
-    ended: bool = False
-
-
-@dataclass
-class Tripped:
-    """One trip: when, what, and what must happen before arming again."""
-
-    tick: int
-    cause: str
-    sentence: str
-
 
 class RunModel:
     """The state of one run."""
@@ -117,6 +67,7 @@ class RunModel:
         self.notes: list[tuple[int, str]] = []  # marks, refusals and notices, with their ticks
         self.pictures: dict[int, Fields] = {}  # by number of the tap
         self.last_tap: int | None = None
+        self.unexplained: int | None = None  # the tap just left out, while a reason for it is asked for
         self.map: Fields = {}
         self.theory: Fields = {}
         self.exit_code: int | None = None
@@ -163,6 +114,7 @@ class RunModel:
             ("verdict", self._verdict),
             ("picture", self._picture),
             ("prompt", self._prompt),
+            ("refused", self._refused),
             ("ready", self._ready),
             ("stopped", self._stopped),
             ("done", self._done),
@@ -223,6 +175,7 @@ class RunModel:
         return self._go("running")
 
     def _on_level(self, event: Fields) -> Changed:
+        self.unexplained = None
         self.rungs.append(
             Rung(
                 int(event["level"]),
@@ -271,6 +224,15 @@ class RunModel:
         mark = self.tap(int(event["tap"]))
         if mark is not None:
             mark.outcome, mark.reason = "excluded", str(event.get("reason", ""))
+            self.unexplained = mark.tap
+        return {LEVELS, TAP}
+
+    def _on_tap_reason(self, event: Fields) -> Changed:
+        mark = self.tap(int(event["tap"]))
+        if mark is not None and mark.outcome == "excluded":
+            mark.reason = str(event["reason"])
+            if self.unexplained == mark.tap:
+                self.unexplained = None
         return {LEVELS, TAP}
 
     def _on_prompt(self, event: Fields) -> Changed:
@@ -306,16 +268,15 @@ class RunModel:
     def _on_refused(self, event: Fields) -> Changed:
         return self._note(event, str(event["reason"]))
 
+    def _refused(self, words: str) -> Changed:
+        return self._note({"tick": self.tick}, str(words))
+
     def _on_mark(self, event: Fields) -> Changed:
         return self._note(event, str(event.get("text", "")))
 
     def _on_notice(self, event: Fields) -> Changed:
-        kind = str(event.get("notice", ""))
-        if kind in SILENT:
-            return set()
-        words = str(event.get("text") or event.get("cause") or "")
-        named = NOTICES.get(kind, kind.replace("_", " "))
-        return self._note(event, f"{named}: {words}" if words and named else named or words)
+        words = notice_words(event)
+        return self._note(event, words) if words else set()
 
     def _on_loss(self, event: Fields) -> Changed:
         self.lost_rows += int(event.get("rows", 0))
@@ -356,9 +317,11 @@ class RunModel:
         mark = self.tap(int(told["tap"]))
         if mark is None:
             return set()
-        mark.reason = str(told["reason"])
         mark.decay_per_s, mark.decay_std_per_s = told["decay_per_s"], told["decay_std_per_s"]
-        if mark.outcome != "excluded":
+        if self.unexplained is not None and mark.tap > self.unexplained:
+            self.unexplained = None
+        if mark.outcome != "excluded":  # what the operator said holds, also against a verdict that came late
+            mark.reason = str(told["reason"])
             if told["accepted"]:
                 mark.outcome = "accepted"
             elif not told["returned"]:
