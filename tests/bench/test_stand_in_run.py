@@ -84,9 +84,9 @@ def test_live_replay_and_analysis_agree(tmp_path: Path, where: str) -> None:
 
 def test_the_command_on_a_port(tmp_path: Path) -> None:
     rig, protocol, out = tmp_path / "light.toml", tmp_path / "short.toml", tmp_path / "run.h5"
-    rig.write_text(light_rig(), encoding="utf-8")
+    rig.write_text(patient_rig(), encoding="utf-8")
     protocol.write_text(SPIN.replace("60 s", "0.5 s"), encoding="utf-8")
-    with stand_in(tmp_path / "served") as served:
+    with stand_in(tmp_path / "served", *PATIENT) as served:
         run = ("run", str(protocol), "--rig", str(rig), "--port", served.address, "--out", str(out))
         refused = command(*run)
         assert refused.returncode == 2 and "--acknowledge" in refused.stderr
@@ -131,8 +131,8 @@ def until_failed(heard: Listener) -> dict[str, object]:
 
 
 def test_two_runs_on_one_board_or_one_file(tmp_path: Path) -> None:
-    with stand_in(tmp_path / "served") as served:
-        with BenchClient(job_for(served, tmp_path / "run.h5")) as first:
+    with stand_in(tmp_path / "served", *PATIENT) as served:
+        with BenchClient(job_for(served, tmp_path / "run.h5", rig=patient_rig())) as first:
             heard = Listener(first)
             heard.wait(lambda: heard.event("drive"), what="the first run")
             with BenchClient(job_for(served, tmp_path / "other.h5")) as second:

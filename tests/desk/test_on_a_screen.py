@@ -19,7 +19,7 @@ sys.path[:0] = [{desk!r}, {bench!r}]
 from PySide6.QtTest import QTest
 from PySide6.QtWidgets import QApplication
 from rig.desk.entry import application, window
-from trials import SPIN, job_for, stand_in
+from trials import PATIENT, SPIN, job_for, patient_rig, stand_in
 
 folder = Path({folder!r})
 app = application()
@@ -35,8 +35,8 @@ def wait(done, what):
         QTest.qWait(10)
     raise SystemExit(f"{{what}} did not come: {{shown.link.model.phase}} {{shown.link.model.reason}}")
 
-with stand_in(folder / "served") as served:
-    shown.start_run(job_for(served, folder / "run.h5", SPIN, pictures=True, may_go_on=True))
+with stand_in(folder / "served", *PATIENT) as served:
+    shown.start_run(job_for(served, folder / "run.h5", SPIN, rig=patient_rig(), pictures=True, may_go_on=True))
     model = shown.link.model
     wait(lambda: (model.flap_hz or 0.0) > 3.0, "the crank")
     journal = folder / "run.journal"

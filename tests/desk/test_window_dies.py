@@ -9,7 +9,7 @@ import sys
 from pathlib import Path
 
 import pytest
-from trials import light_rig, stand_in, until
+from trials import PATIENT, stand_in, until
 
 from rig.session import open_session
 
@@ -18,7 +18,7 @@ import sys
 from pathlib import Path
 sys.path.insert(0, {bench!r})
 from rig.desk.entry import application, window
-from trials import SPIN, job_for
+from trials import SPIN, job_for, patient_rig
 
 class Served:
     address = {address!r}
@@ -28,14 +28,14 @@ folder = Path({folder!r})
 shown = window(folder / "config", folder / "state")
 shown.sounds.on = False
 shown.show()
-shown.start_run(job_for(Served(), folder / "run.h5", SPIN, pictures=True, may_go_on=True))
+shown.start_run(job_for(Served(), folder / "run.h5", SPIN, rig=patient_rig(), pictures=True, may_go_on=True))
 app.exec()
 """
 
 
 @pytest.mark.parametrize("how", [signal.SIGKILL, signal.SIGSTOP], ids=["killed", "frozen"])
 def test_the_drive_goes_off(tmp_path: Path, how: signal.Signals) -> None:
-    with stand_in(tmp_path / "served", rig=light_rig()) as served:
+    with stand_in(tmp_path / "served", *PATIENT) as served:
         bench = str(Path(__file__).parents[1] / "bench")
         script = SCRIPT.format(bench=bench, address=served.address, folder=str(tmp_path))
         shown = subprocess.Popen(
