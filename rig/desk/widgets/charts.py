@@ -69,6 +69,11 @@ class Chart:
         self.lines.set_look(theme, font)
         self.words.set_look(theme, font)
 
+    def set_shown(self, shown: bool) -> None:
+        """A chart that is hidden takes no room."""
+        self.view.setVisible(shown)
+        self.left.setVisible(shown)
+
     def curve(self, z: float = 0.0, *, smooth: bool = False) -> Curve:
         """A curve in this view. Smooth ones cost too much to be drawn 30 times a second."""
         made = Curve(z, smooth=smooth)

@@ -8,21 +8,20 @@ from __future__ import annotations
 
 import math
 
-import numpy as np
 from PySide6.QtCore import QElapsedTimer, QPoint, QPointF, Qt, Signal
 from PySide6.QtGui import QAction, QFontMetricsF
 from PySide6.QtWidgets import QButtonGroup, QMenu, QToolButton, QWidget
 
-from rig.desk.model.fold import Folded, FoldedSignal, fold
-from rig.desk.model.ranges import CalmRange, ticks
+from rig.desk.model.fold import Folded, fold
+from rig.desk.model.ranges import ticks
 from rig.desk.model.run_model import RunModel
-from rig.desk.model.signals import BODY, UNITS, Trace, Traces
+from rig.desk.model.signals import BODY, UNITS, Traces
 from rig.desk.model.trace_model import TraceSource
 from rig.desk.theme import Theme
-from rig.desk.widgets.axes import pen, wash
-from rig.desk.widgets.charts import Band, Canvas, Chart, zigzag
-from rig.desk.widgets.legend import THICK_SHARE, Entry, Legend
+from rig.desk.widgets.charts import Canvas
+from rig.desk.widgets.legend import Entry, Legend
 from rig.desk.widgets.saving import Column, SavablePlot
+from rig.desk.widgets.signal_chart import NAMES, Seconds, SignalChart
 
 #: Spans to choose from, s; the last choice is folded on the crank phase.
 SPANS_S = (1.0, 2.0, 10.0, 60.0)
@@ -30,69 +29,9 @@ SPAN_S = 2.0
 FOLDED_OF_S = 1.5
 #: Without new rows for so long, a picture is told to be old.
 STALE_MS = 500
-#: Signals drawn unless others are chosen, and the narrowest range of each, in its unit.
+#: Signals drawn unless others are chosen.
 FIRST = (BODY, "motor voltage", "vertical load", "motor current")
-LEAST = {
-    BODY: 2.0,
-    "motor voltage": 1.0,
-    "vertical load": 1.0,
-    "motor current": 0.4,
-    "flap rate": 1.0,
-    "carriage height": 1.0,
-}
-NAMES = {"motor voltage": "drive", "vertical load": "load", "motor current": "current"}
 FOLD_STEPS = [(float(angle), str(angle)) for angle in range(0, 361, 45)]
-
-
-class SignalChart(Chart):
-    """One signal: its course, its mean over each turn if it has one, its range."""
-
-    def __init__(self, canvas: Canvas, row: int, measures: str, *, bottom: bool) -> None:
-        super().__init__(canvas, row, bottom=bottom)
-        self.measures = measures
-        self.name = NAMES.get(measures, measures)
-        self.left.set_name(self.name, UNITS[measures])
-        self.range = CalmRange(LEAST[measures])
-        self.course = self.curve(0.0)
-        self.mean = self.curve(2.0)
-        self.band = Band()
-        self.add(self.band)
-        self.held = False  # its range stays as it is
-
-    def set_theme(self, theme: Theme) -> None:
-        self.course.set_pen(pen(theme.trace))
-        self.mean.set_pen(pen(theme.mean))
-        self.band.set_brush(wash(theme.trace, THICK_SHARE))
-
-    def show_old(self, theme: Theme, old: bool) -> None:
-        """A picture that is not of now is pale."""
-        self.course.set_pen(pen(theme.rule if old else theme.trace))
-        self.mean.set_pen(pen(theme.faint if old else theme.mean))
-
-    def draw_course(self, trace: Trace, mean: Trace | None) -> None:
-        self.band.clear()
-        broken = np.zeros(2 * len(trace.broken), bool)
-        broken[::2] = trace.broken  # before the column, not inside it
-        self.course.draw(*zigzag(trace.time_s, trace.low, trace.high), broken)
-        if mean is None:
-            self.mean.clear()
-        else:
-            self.mean.draw(mean.time_s, mean.low, mean.broken)
-
-    def draw_folded(self, folded: FoldedSignal) -> None:
-        self.band.draw(folded.phase_deg, folded.low, folded.high)
-        self.course.draw(folded.last_phase_deg, folded.last)
-        self.mean.draw(folded.phase_deg, folded.mean)
-
-    def clear(self) -> None:
-        for drawn in (self.band, self.course, self.mean):
-            drawn.clear()
-
-    def fit(self, low: float, high: float, at_s: float) -> tuple[float, float] | None:
-        """A new range for what is to be seen, or None if it stays."""
-        if self.held or not self.range.take(low, high, at_s):
-            return None
-        return self.range.low, self.range.high
 
 
 class TracesView(SavablePlot):
@@ -106,7 +45,8 @@ class TracesView(SavablePlot):
         self.source: TraceSource | None = None
         self.span_s = SPAN_S
         self.shown: tuple[str, ...] = FIRST
-        self.charts: dict[str, SignalChart] = {}
+        self.charts: dict[str, SignalChart] = {}  # those shown
+        self._made: dict[str, SignalChart] = {}  # all there are: see _build
         self._drawn: Traces | Folded | None = None
         self.newest: int | None = None  # of the rows drawn
         self._old = self._ended = False
@@ -116,6 +56,7 @@ class TracesView(SavablePlot):
         self.header.insertWidget(0, self.key, 1, Qt.AlignmentFlag.AlignVCenter)
         self.canvas = Canvas()
         self.column.addWidget(self.canvas, 1)
+        self.seconds: Seconds | None = None
         self.spans = QButtonGroup(self)
         for span_s in (*SPANS_S, 0.0):
             button = QToolButton(self.controls)
@@ -149,6 +90,8 @@ class TracesView(SavablePlot):
         if source is not None:
             kept = tuple(measures for measures in FIRST if measures in source.signals)
             self.shown = kept or source.signals[:4]
+        for chart in self._made.values():
+            chart.forget()
         self._build()
 
     def show_signals(self, shown: tuple[str, ...]) -> None:
@@ -277,12 +220,27 @@ class TracesView(SavablePlot):
     # -- building --------------------------------------------------------------------------------------
 
     def _build(self) -> None:
-        """One chart for each signal shown."""
-        self.canvas.clear()
-        self.charts = {}
-        for row, measures in enumerate(self.shown):
-            bottom = measures == self.shown[-1]
-            self.charts[measures] = SignalChart(self.canvas, row, measures, bottom=bottom)
+        """One chart for each signal shown.
+
+        A chart is made when its signal is first shown, in a row of its own, and hidden when it is not. Made again
+        where others had just been let go, charts could end the interpreter: the bindings took a new object for the
+        one that had been at its address.
+        """
+        rows = list(UNITS)
+        for measures in self.shown:
+            if measures not in self._made:
+                self._made[measures] = SignalChart(self.canvas, rows.index(measures), measures)
+        for measures, chart in self._made.items():
+            chart.set_shown(measures in self.shown)
+            chart.bottom = None
+        self.charts = {measures: self._made[measures] for measures in self.shown}
+        if self.charts:
+            last = self.charts[self.shown[-1]]
+            if self.seconds is None:
+                self.seconds = Seconds(last.view)
+                self.canvas.addItem(self.seconds, row=len(rows), col=1)
+            self.seconds.stand_under(last.view)
+            last.bottom = self.seconds
         stops = None if self.source is None else self.source.stops_deg
         if stops is not None and BODY in self.charts:
             self.charts[BODY].lines.across = [(stops[0], "lower stop"), (stops[1], "upper stop")]
@@ -301,7 +259,7 @@ class TracesView(SavablePlot):
         font = self.font()
         metrics = QFontMetricsF(font)
         names_px = max((metrics.horizontalAdvance(chart.name) for chart in self.charts.values()), default=0.0)
-        for chart in self.charts.values():
+        for chart in self._made.values():  # hidden ones too: the column of scales is as wide as its widest
             chart.set_theme(self.theme)
             chart.set_look(self.theme, font, names_px + 0.8 * metrics.height())
             chart.view.setMinimumHeight(1.5 * metrics.height())
