@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-from PySide6.QtCore import QElapsedTimer, QObject, QRunnable, QThreadPool, Signal
+from PySide6.QtCore import QElapsedTimer, QObject, QRunnable, QThreadPool, QTimer, Signal
 
 from rig.desk.model.replay_model import ReplayModel
 from rig.desk.model.run_model import EVERYTHING, TAP, Changed
@@ -15,16 +15,24 @@ from rig.problem import FileProblems
 from rig.record.errors import Damaged
 from rig.session import open_session
 
+#: A tap is fitted once the replay has stayed with it for so long: those that are passed by are not worth it, and
+#: while a fit is at work the window draws late.
+STAY_MS = 100
+
+
+class _Told(QObject):
+    """Tells the window's loop of a picture: (number of the tap, picture, None or {"failed"}). It outlives its tasks,
+    as a signal is not delivered from an object that is gone."""
+
+    made = Signal(int, object)
+
 
 class _PictureTask(QRunnable):
     """Fits one tap of the session."""
 
-    class Told(QObject):
-        made = Signal(int, object)
-
-    def __init__(self, player: ReplayModel, number: int) -> None:
+    def __init__(self, player: ReplayModel, number: int, told: _Told) -> None:
         super().__init__()
-        self.told = self.Told()
+        self._told = told
         self._player = player
         self._number = number
 
@@ -33,7 +41,7 @@ class _PictureTask(QRunnable):
             picture = self._player.picture(self._number)
         except (Damaged, ValueError) as error:
             picture = {"failed": str(error)}
-        self.told.made.emit(self._number, picture)
+        self._told.made.emit(self._number, picture)
 
 
 class Replaying(QObject):
@@ -65,7 +73,15 @@ class Replaying(QObject):
         self._elapsed = QElapsedTimer()
         self._events_s = [time_s for time_s, _ in self.player.events()]
         self._taps = self.player.taps()
-        self._asked: set[int] = set()
+        self._told = _Told(self)
+        self._told.made.connect(self._made)
+        self._tap: int | None = None  # the last one that was shown
+        self._fitting = self._closed = False
+        self._without: set[int] = set()  # taps no picture can be made of
+        self._stay = QTimer(self)
+        self._stay.setSingleShot(True)
+        self._stay.setInterval(STAY_MS)
+        self._stay.timeout.connect(self._fit)
 
     def begin(self) -> None:
         """Show the beginning, playing."""
@@ -75,9 +91,15 @@ class Replaying(QObject):
         self._show(EVERYTHING)
 
     def close(self) -> None:
+        """Let go of the session; safe to repeat."""
+        if self._closed:
+            return
         self.player.playing = False
+        self._closed = True
+        self._stay.stop()
         self._pool.waitForDone(20_000)
         self.session.close()
+        self.deleteLater()  # or the window would keep every session it has shown
 
     # -- wishes ----------------------------------------------------------------------------------------
 
@@ -116,24 +138,30 @@ class Replaying(QObject):
     def _show(self, changed: Changed) -> None:
         player = self.player
         self._bar.show_position(player.position_s, player.duration_s, player.playing)
-        number = player.model.last_tap
-        if number is not None and number not in player.model.pictures:
-            self._ask(number)
+        if player.model.last_tap != self._tap:
+            self._tap = player.model.last_tap
+            self._stay.start()
         if changed:
             self._page.refresh(player.model, changed)
 
-    def _ask(self, number: int) -> None:
-        if number in self._asked:
+    def _fit(self) -> None:
+        """Make the picture of the tap that is shown, if it has none; one at a time."""
+        number = self._tap
+        if number is None or number in self.player.model.pictures or number in self._without:
             return
-        self._asked.add(number)
-        task = _PictureTask(self.player, number)
-        task.told.made.connect(self._made)
-        self._told = task.told  # the task may be gone before its signal is delivered
-        self._pool.start(task)
+        if not self._fitting:
+            self._fitting = True
+            self._pool.start(_PictureTask(self.player, number, self._told))
 
     def _made(self, number: int, picture: dict[str, Any] | None) -> None:
-        self._asked.discard(number)
-        if picture is not None and "failed" not in picture:
+        self._fitting = False
+        if self._closed:
+            return
+        if picture is None or "failed" in picture:
+            self._without.add(number)
+        else:
             self.player.model.pictures[number] = picture
             if self.player.model.last_tap == number:
                 self._page.refresh(self.player.model, {TAP})
+        if self._tap != number and not self._stay.isActive():
+            self._fit()
