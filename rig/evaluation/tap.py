@@ -57,12 +57,15 @@ def analyse_tap(store: RowStore, visit: TapVisit, rig: RigDescription) -> TapAna
     was_held = state_before is not None and state_before.state in ("held", "friction_held")
     after = whole.after(tap_s)
     if state_before is None or len(after) < 100:
-        return _told(store, visit, False, False, "the record around the tap is too short")
+        reason = _taken_back(visit) or "the record around the tap is too short"
+        return _told(store, visit, False, False, reason)
     if not was_held:
         last = state_of(after.after(after.time_s[-1] - 1.0), rig)
         captured = last is not None and last.state == "held"
         words = "captured by the tap" if captured else "not captured by the tap"
         reason = f"{state_before.reason} before the tap; {words}"
+        if visit.excluded:
+            reason = f"{_taken_back(visit)}; {reason}"
         return TapAnalysis(_result(store, visit, False, False, reason), captured=captured)
     return _held_tap(store, visit, rig, before, whole, tap_s)
 
@@ -124,12 +127,17 @@ def _held_tap(
     )
 
 
+def _taken_back(visit: TapVisit) -> str:
+    """The operator's word comes first, whatever the record shows; "" if there is none."""
+    return f"excluded by the operator: {visit.excluded}" if visit.excluded else ""
+
+
 def _verdict(
     visit: TapVisit, fit: DecayFit, came: str, returned: bool, seen: bool, hits: int
 ) -> tuple[str, bool]:
     """Why a tap counts for the decay, or why not."""
     if visit.excluded:
-        return f"excluded by the operator: {visit.excluded}", False
+        return _taken_back(visit), False
     if not returned:
         return came, False
     if not seen:

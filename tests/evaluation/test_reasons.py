@@ -11,6 +11,9 @@ from short_sessions import make
 from rig.command.sessions import analyse_session, session_rig
 from rig.desk.model.replay_model import ReplayModel
 from rig.evaluation.replay import Replay
+from rig.evaluation.stream import RowStore
+from rig.evaluation.tap import analyse_tap
+from rig.evaluation.timeline import TapVisit
 from rig.events import Event
 from rig.report.tables import excluded_lines
 from rig.session import Session, open_session
@@ -86,6 +89,27 @@ def test_a_reason_alone_leaves_nothing_out(session: Session) -> None:
         *(Event(rest[-1].tick, "tap_reason", {"tap": tap, "reason": "for nothing"}) for tap in (2, 99, -1)),
     ]
     assert results(session, [first, *strange]) == results(session, session.events)
+
+
+def test_the_operators_word_comes_first_whatever_the_record_shows(session: Session) -> None:
+    """Given again a moment after it was given, or given to a body on its end stop: nothing could be fitted."""
+    board = session.streams["board"]
+    (tick, *_) = (event.tick for event in session.events if event.kind == "tap")
+    store = RowStore(board.channels, board.tick_hz)
+    store.append(board.part(board.first_tick, tick + board.tick_hz))
+
+    def reason(at: int, seconds: float, excluded: str) -> str:
+        end = at + int(seconds * board.tick_hz)
+        visit = TapVisit(0, 0, at, 1e-4, "tapper", end_tick=end, excluded=excluded)
+        return analyse_tap(store, visit, session.rig).result.reason
+
+    at_stop = board.first_tick + 2 * board.tick_hz
+    for where, seconds, shown in ((tick, 0.05, "the record around the tap is too short"), (at_stop, 2.0, "")):
+        plain = reason(where, seconds, "")
+        assert shown in plain and "operator" not in plain
+        assert reason(where, seconds, "too hard").startswith("excluded by the operator: too hard")
+    assert plain.endswith("captured by the tap")
+    assert reason(at_stop, 2.0, "too hard") == f"excluded by the operator: too hard; {plain}"
 
 
 def test_the_windows_replay_tells_it_when_it_was_said(session: Session) -> None:
