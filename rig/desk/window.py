@@ -105,6 +105,7 @@ class Window(QMainWindow):
         page = BenchPage(self.theme)
         page.run.halted.connect(self.halt)
         page.run.asked.connect(self.ask)
+        page.run.reasoned.connect(self.tell_reason)
         page.run.tap_wanted.connect(self.show_tap)
         page.run.said.connect(self.say)
         self.reports = Reports(page.outcome, lambda: self.link.model.session if self.link is not None else "")
@@ -231,6 +232,11 @@ class Window(QMainWindow):
     def ask(self, kind: str) -> None:
         if self.link is not None:
             self.link.send(kind)
+
+    def tell_reason(self, tap: int, reason: str) -> None:
+        """Why a tap was left out."""
+        if self.link is not None:
+            self.link.send("reason", reason, tap)
 
     def _changed(self, changed: Changed) -> None:
         if self.link is None:

@@ -122,6 +122,28 @@ class Studio:
         self.player.model.take({"prompt": "tap now, upward, gently, with the rod"})
         self.refresh()
 
+    def left_out(self) -> None:
+        """The last tap has just been thrown out: why is asked."""
+        self.live()
+        model = self.player.model
+        number = model.rungs[-1].taps[-1].tap
+        words = "rejected by the operator"
+        model.take({"event": {"tick": model.tick, "kind": "tap_excluded", "tap": number, "reason": words}})
+        self.refresh()
+
+    def left_out_by_hand(self) -> None:
+        """The same while the next tap is called for."""
+        self.left_out()
+        self.player.model.take({"prompt": "tap now, upward, gently, with the rod"})
+        self.refresh()
+
+    def other_words(self) -> None:
+        """The same while other words are typed."""
+        self.left_out()
+        why = self.window.run.prompt.why
+        why.buttons[-1].click()
+        self.refresh()
+
     def tripped(self) -> None:
         self.live()
         model = self.player.model
@@ -150,7 +172,19 @@ class Studio:
         self.window.run.tick()
 
 
-STATES = ("idle", "checked", "armed", "running", "prompt", "tripped", "finished", "replay")
+STATES = (
+    "idle",
+    "checked",
+    "armed",
+    "running",
+    "prompt",
+    "left_out",
+    "left_out_by_hand",
+    "other_words",
+    "tripped",
+    "finished",
+    "replay",
+)
 
 
 def pictures(folder: Path, states: tuple[str, ...]) -> None:

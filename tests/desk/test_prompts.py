@@ -120,6 +120,8 @@ def test_after_a_tap_it_can_be_taken_back(host: Host, qapp: QApplication) -> Non
     run.tap("excluded", by="hand")
     assert offered(tell(host, run, qapp)) == {"enough"}
     run.level_end()
+    assert offered(tell(host, run, qapp)) == set()  # why it was left out may still be said
+    run.level("rising", 9.0)
     assert not tell(host, run, qapp).isVisible()
 
 

@@ -92,7 +92,11 @@ def test_a_whole_protocol_with_a_redone_tap_a_trip_and_going_on(
     )
     assert window.run.tap.isVisible() and window.run.ladder.tap_box(0) is not None
     qtbot.keyClick(window, Qt.Key.Key_R)  # whichever tap was the last by then
-    qtbot.waitUntil(lambda: "excluded" in [mark.outcome for mark in model.rungs[0].taps], timeout=LONG_MS)
+    qtbot.waitUntil(lambda: model.unexplained is not None, timeout=LONG_MS)
+    number = model.unexplained
+    qtbot.keyClick(window, Qt.Key.Key_2)
+    qtbot.waitUntil(lambda: model.tap(number).reason == "wrong way" or told(), timeout=LONG_MS)
+    assert model.tap(number).outcome == "excluded" and model.unexplained is None
     served.fault("open_guard")
     phase(window, qtbot, "waiting")
     assert "guard" in model.trips[-1].sentence and window.run.prompt.isVisible()
@@ -111,7 +115,9 @@ def test_a_whole_protocol_with_a_redone_tap_a_trip_and_going_on(
     with open_session(model.session) as session:
         kinds = [event.kind for event in session.events]
         assert session.losses == []
-    for kind in ("tap_excluded", "trip", "waiting", "rearmed", "halt", "finished"):
+        left_out = {tap["tap"]: tap["reason"] for tap in session.results["final"]["excluded"]}
+        assert left_out[number] == "excluded by the operator: wrong way"
+    for kind in ("tap_excluded", "tap_reason", "trip", "waiting", "rearmed", "halt", "finished"):
         assert kind in kinds
     assert kinds.count("trip") == 1 and kinds[-1] == "finished"
     window.open_replay(model.session)
@@ -132,6 +138,31 @@ def test_the_halt_keys_work_whatever_has_the_focus(
     qtbot.waitUntil(lambda: not window.running, timeout=LONG_MS)
     with open_session(tmp_path / "run.h5") as session:
         assert [event.data["cause"] for event in session.events if event.kind == "halt"] == ["operator"]
+
+
+def test_the_halt_keys_work_while_other_words_are_typed(
+    window: Window, qtbot: QtBot, served: StandIn, tmp_path: Path
+) -> None:
+    start(window, qtbot, spinning(served, tmp_path / "run.h5"))
+    model, tick = window.link.model, 0  # type: ignore[union-attr]
+    for data in (
+        {"kind": "level", "level": 0, "direction": "rising", "drive_v": 3.0},
+        {"kind": "tap", "tap": 0, "level": 0, "by": "hand"},
+        {"kind": "tap_excluded", "tap": 0, "reason": "rejected by the operator"},
+    ):
+        window._changed(model.take({"event": {"tick": tick, **data}}))
+    qtbot.keyClick(window, Qt.Key.Key_6)
+    line = window.run.prompt.why.line
+    qtbot.keyClicks(line, "the rod 1")
+    assert line.text() == "the rod 1" and model.phase == "running"
+    qtbot.keyClick(line, Qt.Key.Key_Escape)
+    phase(window, qtbot, "waiting")
+    assert not line.isVisible()
+    qtbot.keyClick(window, Qt.Key.Key_E)
+    qtbot.waitUntil(lambda: not window.running, timeout=LONG_MS)
+    with open_session(tmp_path / "run.h5") as session:
+        assert [event.data["cause"] for event in session.events if event.kind == "halt"] == ["operator"]
+        assert "tap_reason" not in [event.kind for event in session.events]
 
 
 def test_the_halt_control_needs_one_press(

@@ -46,6 +46,9 @@ OUTCOME_SHAPES = {
     "left_out": "ring",
     "excluded": "struck",
 }
+#: Why a tap is left out as a rule, in the order of their keys (common practice, no source); anything else is typed.
+REASONS = ("struck twice", "wrong way", "too hard", "too gentle", "body or cable touched")
+OTHER_WORDS = "other words"
 LIMIT_WORDS = {
     "current": "current",
     "voltage": "voltage",

@@ -8,7 +8,8 @@
     off, still turning                keep clear              none
     off, waiting                      why                     Go on at this level (G), End the run (E)
 
-Otherwise, and in a replay, it is hidden.
+Otherwise, and in a replay, it is hidden. While a run is on, a tap that has just been left out adds a row below that
+asks why (`reason_row`): keys 1 to 6, until the next tap has been judged or another level begins.
 """
 
 from __future__ import annotations
@@ -31,6 +32,7 @@ from PySide6.QtWidgets import QFrame, QHBoxLayout, QPushButton, QSizePolicy, QVB
 from rig.desk.model.run_model import RunModel
 from rig.desk.model.wording import OUTCOME_SHAPES, asks, opening, tap_sentence, tap_to_judge, waiting_sentence
 from rig.desk.theme import Theme
+from rig.desk.widgets.reason_row import ReasonRow
 from rig.desk.widgets.shapes import ElidedLabel, ShapeMark, blended, rounded, sized
 from rig.desk.widgets.style import set_kind, set_shown
 
@@ -118,6 +120,7 @@ class PromptBanner(QFrame):
     enough = Signal()
     go_on = Signal()
     end = Signal()
+    reason = Signal(int, str)  # number of a tap left out, why
 
     def __init__(self, theme: Theme, parent: QWidget | None = None) -> None:
         super().__init__(parent)
@@ -128,6 +131,7 @@ class PromptBanner(QFrame):
         self.heading = FittingText()
         self.detail = ElidedLabel()
         self.mark = ShapeMark(theme)
+        self.why = ReasonRow()
         self.buttons: dict[str, QPushButton] = {}
         self._shortcuts: dict[str, QShortcut] = {}
         row = QHBoxLayout()
@@ -154,6 +158,11 @@ class PromptBanner(QFrame):
         column.setSpacing(6)
         column.addWidget(self.heading)
         column.addLayout(row)
+        column.addWidget(self.why)
+        self.why.given.connect(self.reason)
+        self.why.changed.connect(self._asked_less)
+        for signal in (self.redo, self.reject):
+            signal.connect(self.why.pass_over)
         self.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Fixed)
         self.setAccessibleName("what is asked of you")
         self.set_theme(theme)
@@ -189,6 +198,7 @@ class PromptBanner(QFrame):
         """A recorded run is shown: nothing is asked, and no key answers."""
         self._replay = on
         if on:
+            self.why.withdraw()
             self._rest()
 
     def _rest(self) -> None:
@@ -198,10 +208,16 @@ class PromptBanner(QFrame):
     def refresh(self, model: RunModel) -> None:
         if self._replay:
             return
+        if model.phase == "running":
+            self.why.offer(model.unexplained)
+        else:
+            self.why.withdraw()
         mark = tap_to_judge(model)
         judge = {"redo", "reject"} if mark is not None and mark.outcome != "excluded" else set()
         if model.phase == "running" and model.on_hand is not None and model.on_hand.taps:
             judge = judge | {"enough"}
+        if mark is None and self.why.tap is not None:
+            mark = model.tap(self.why.tap)
         detail, shape = (tap_sentence(mark), OUTCOME_SHAPES[mark.outcome]) if mark is not None else ("", "")
         if model.phase == "waiting":
             self._show("alert", waiting_sentence(model), "", "", {"go_on", "end"})
@@ -211,7 +227,7 @@ class PromptBanner(QFrame):
             self._show("ask", opening(model.prompt), "", "", {"done"})
         elif model.prompt:
             self._show("call", opening(model.prompt), detail, shape, judge)
-        elif judge:
+        elif judge or self.why.tap is not None:
             self._show("slim", "", detail, shape, judge)
         else:
             self._rest()
@@ -235,6 +251,15 @@ class PromptBanner(QFrame):
             self.setAccessibleDescription(heading)
             QAccessible.updateAccessibility(QAccessibleEvent(self, QAccessible.Event.Alert))
 
+    def _asked_less(self) -> None:
+        """The row below has been answered: without anything else to say the banner goes at once."""
+        if (
+            self._tone == "slim"
+            and self.why.tap is None
+            and not any(not button.isHidden() for button in self.buttons.values())
+        ):
+            self._rest()
+
     def _offer(self, names: set[str]) -> None:
         for name, button in self.buttons.items():
             set_shown(button, name in names)
@@ -245,6 +270,7 @@ class PromptBanner(QFrame):
         ink = self._theme.accent_ink if on_accent else self._theme.ink
         self.heading.tell(self.heading.text if heading is None else heading, ink)
         set_kind(self.detail, "on_accent" if on_accent else "")
+        self.why.set_on_accent(on_accent)
         if self._shape:
             self.mark.show_shape(self._shape, ink)
 

@@ -46,6 +46,7 @@ class RunPage(QWidget):
 
     halted = Signal()
     asked = Signal(str)  # an input of the operator: acknowledge, redo, reject, next, go_on, end
+    reasoned = Signal(int, str)  # number of a tap left out, why
     tap_wanted = Signal(int)
     said = Signal(str)  # a sentence for the foot of the window
 
@@ -112,6 +113,7 @@ class RunPage(QWidget):
             (self.prompt.end, "end"),
         ):
             signal.connect(lambda kind=kind: self.asked.emit(kind))
+        self.prompt.reason.connect(self.reasoned)
         self.ladder.tap_chosen.connect(self.tap_wanted)
         self.tap.chosen.connect(self.tap_wanted)
         self.map.level_chosen.connect(self._level_chosen)

@@ -2,7 +2,9 @@
 
 Parts ask for a variant with the property `kind` of a widget:
 
-    QPushButton   "primary" (the one to press), "quiet" (no frame until pointed at), "arm" (switches the drive on)
+    QPushButton   "primary" (the one to press), "quiet" (no frame until pointed at), "arm" (switches the drive on),
+                  "small" (one of many in a row)
+    QLineEdit     "small" (in the place of such a row)
     QLabel        "heading", "faint", "alert" (bold), "alerting", "on_accent"
     QFrame        "panel", "rule"
 
@@ -54,6 +56,7 @@ QPushButton[kind="arm"] { background: $panel; border-color: $ink; font-weight: 6
 QPushButton[kind="arm"]:hover { background: $hover; }
 QPushButton[kind="arm"]:focus { border-color: $ring; }
 QPushButton[kind="arm"]:disabled { color: $off; background: $ground; border-color: $rule; }
+QPushButton[kind="small"] { padding: 0.15em 0.5em; min-height: 1.4em; }
 QPushButton[kind="quiet"] { background: transparent; border-color: transparent; }
 QPushButton[kind="quiet"]:hover { background: $raised; }
 QPushButton[kind="quiet"]:focus { border-color: $ring; }
@@ -62,6 +65,7 @@ QLineEdit, QPlainTextEdit, QTextEdit, QSpinBox, QDoubleSpinBox, QComboBox {
     color: $ink; background: $panel; border: 2px solid $edge; border-radius: 4px; padding: 0.3em 0.5em;
     selection-background-color: $accent; selection-color: $accent_ink;
 }
+QLineEdit[kind="small"] { padding: 0.22em 0.5em; }
 QLineEdit:focus, QPlainTextEdit:focus, QTextEdit:focus, QSpinBox:focus, QDoubleSpinBox:focus, QComboBox:focus {
     border-color: $ring;
 }
