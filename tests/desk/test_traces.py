@@ -17,6 +17,7 @@ from invented_plots import (
     ring,
 )
 from PySide6.QtCore import QPoint
+from PySide6.QtGui import QFontMetricsF
 from PySide6.QtWidgets import QApplication, QMenu
 from pytestqt.qtbot import QtBot
 from told_runs import dressed, settle
@@ -93,6 +94,22 @@ def test_each_scale_names_its_unit(live: TracesView) -> None:
     live.choose_span(0.0)
     assert below[0].name == "crank phase (deg)"
     assert [text for _, text in below[0].ticks] == [str(angle) for angle in range(0, 361, 45)]
+
+
+def test_in_one_line_a_name_gives_way_to_its_unit(live: TracesView) -> None:
+    left = next(iter(live.charts.values())).left
+    names_px, metrics = left._names_px, QFontMetricsF(left._font)
+    for name, unit in (
+        ("body angle", "deg"),
+        ("load", "N"),
+        ("a name of many words", "mN m s"),
+        ("crank", ""),
+    ):
+        left.set_name(name, unit)
+        shown = left.in_one_line()
+        assert metrics.horizontalAdvance(shown) <= names_px and shown.endswith(unit)
+        assert shown == f"{name} {unit}".strip() or "…" in shown
+    assert "…" not in shown  # the last one fits
 
 
 def test_folded_signals_are_drawn_over_the_phase(live: TracesView) -> None:

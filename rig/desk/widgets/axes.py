@@ -138,13 +138,19 @@ class Scale(pg.GraphicsWidget):
         two = size.height() >= 2.0 * line
         top = 0.5 * (size.height() - (2.0 if two else 1.0) * line)
         painter.setPen(QColor(theme.ink))
-        name = self._name if two else f"{self._name} {self._unit}"
+        name = self._name if two else self.in_one_line()
         painter.drawText(QRectF(0.0, top, self._names_px, line), Qt.AlignmentFlag.AlignLeft, name)
         if two:
             painter.setPen(QColor(theme.faint))
             painter.drawText(
                 QRectF(0.0, top + line, self._names_px, line), Qt.AlignmentFlag.AlignLeft, self._unit
             )
+
+    def in_one_line(self) -> str:
+        """Name and unit for a column too low for two lines; the name is shortened, never its unit."""
+        metrics, unit = QFontMetricsF(self._font), f" {self._unit}" if self._unit else ""
+        room = self._names_px - metrics.horizontalAdvance(unit)
+        return metrics.elidedText(self._name, Qt.TextElideMode.ElideRight, room) + unit
 
     def _paint_flat(self, painter: QPainter, theme: Theme) -> None:
         size, metrics = self.size(), QFontMetricsF(painter.font())
