@@ -1,47 +1,23 @@
-"""A replay on the run page: the player, its position shown, its tap pictures made off the window's loop."""
+"""A replay on the run page: the player, its position shown, its tap pictures made in another process."""
 
 from __future__ import annotations
 
 from pathlib import Path
 from typing import Any
 
-from PySide6.QtCore import QElapsedTimer, QObject, QRunnable, QThreadPool, QTimer, Signal
+from PySide6.QtCore import QElapsedTimer, QObject, QTimer
 
 from rig.desk.model.replay_model import ReplayModel
 from rig.desk.model.run_model import EVERYTHING, TAP, Changed
+from rig.desk.tap_fitter import TapFitter
 from rig.desk.widgets.replay_bar import ReplayBar
 from rig.desk.widgets.run_page import RunPage
 from rig.problem import FileProblems
 from rig.record.errors import Damaged
 from rig.session import open_session
 
-#: A tap is fitted once the replay has stayed with it for so long: those that are passed by are not worth it, and
-#: while a fit is at work the window draws late.
+#: A tap is fitted once the replay has stayed with it for so long: those that are passed by are not worth it.
 STAY_MS = 100
-
-
-class _Told(QObject):
-    """Tells the window's loop of a picture: (number of the tap, picture, None or {"failed"}). It outlives its tasks,
-    as a signal is not delivered from an object that is gone."""
-
-    made = Signal(int, object)
-
-
-class _PictureTask(QRunnable):
-    """Fits one tap of the session."""
-
-    def __init__(self, player: ReplayModel, number: int, told: _Told) -> None:
-        super().__init__()
-        self._told = told
-        self._player = player
-        self._number = number
-
-    def run(self) -> None:
-        try:
-            picture = self._player.picture(self._number)
-        except (Damaged, ValueError) as error:
-            picture = {"failed": str(error)}
-        self._told.made.emit(self._number, picture)
 
 
 class Replaying(QObject):
@@ -68,15 +44,13 @@ class Replaying(QObject):
         self._page = page
         self._bar = bar
         self._protocol_name = protocol.name
-        self._pool = QThreadPool(self)
-        self._pool.setMaxThreadCount(1)
         self._elapsed = QElapsedTimer()
         self._events_s = [time_s for time_s, _ in self.player.events()]
         self._taps = self.player.taps()
-        self._told = _Told(self)
-        self._told.made.connect(self._made)
+        self.fitter = TapFitter(path, self)
+        self.fitter.made.connect(self._made)
         self._tap: int | None = None  # the last one that was shown
-        self._fitting = self._closed = False
+        self._closed = False
         self._without: set[int] = set()  # taps no picture can be made of
         self._stay = QTimer(self)
         self._stay.setSingleShot(True)
@@ -88,6 +62,7 @@ class Replaying(QObject):
         self._page.begin_replay(self.player, self._protocol_name, self.path.name)
         self._elapsed.start()
         self.player.playing = True
+        self._stay.start()
         self._show(EVERYTHING)
 
     def close(self) -> None:
@@ -97,7 +72,7 @@ class Replaying(QObject):
         self.player.playing = False
         self._closed = True
         self._stay.stop()
-        self._pool.waitForDone(20_000)
+        self.fitter.close()
         self.session.close()
         self.deleteLater()  # or the window would keep every session it has shown
 
@@ -145,23 +120,17 @@ class Replaying(QObject):
             self._page.refresh(player.model, changed)
 
     def _fit(self) -> None:
-        """Make the picture of the tap that is shown, if it has none; one at a time."""
+        """Have the picture of the tap that is shown made, if it has none."""
         number = self._tap
-        if number is None or number in self.player.model.pictures or number in self._without:
-            return
-        if not self._fitting:
-            self._fitting = True
-            self._pool.start(_PictureTask(self.player, number, self._told))
+        if number is None:
+            self.fitter.start()
+        elif number not in self.player.model.pictures and number not in self._without:
+            self.fitter.ask(number)
 
     def _made(self, number: int, picture: dict[str, Any] | None) -> None:
-        self._fitting = False
-        if self._closed:
-            return
-        if picture is None or "failed" in picture:
+        if picture is None:
             self._without.add(number)
-        else:
-            self.player.model.pictures[number] = picture
-            if self.player.model.last_tap == number:
-                self._page.refresh(self.player.model, {TAP})
-        if self._tap != number and not self._stay.isActive():
-            self._fit()
+            return
+        self.player.keep_picture(number, picture)
+        if self.player.model.last_tap == number:
+            self._page.refresh(self.player.model, {TAP})

@@ -58,36 +58,47 @@ def test_a_tap_chosen_while_another_is_fitted_gets_its_picture_too(
     replaying.seek(player.duration_s)
     numbers = [number for number, _ in player.taps()]
     for number in numbers[:3]:
-        qtbot.waitUntil(lambda: not replaying._fitting, timeout=LONG_MS)
+        qtbot.waitUntil(lambda: not replaying.fitter.busy, timeout=LONG_MS)
         replaying.show_tap(number)
-        qtbot.waitUntil(lambda: replaying._fitting, timeout=LONG_MS)
+        qtbot.waitUntil(lambda: replaying.fitter.busy, timeout=LONG_MS)
     replaying.show_tap(numbers[5])
     qtbot.waitUntil(lambda: numbers[5] in player.model.pictures, timeout=LONG_MS)
     assert set(numbers[:3]) <= set(player.model.pictures)
 
 
-def test_a_tap_without_a_picture_is_not_tried_again_and_again(
-    replaying: Replaying, qtbot: QtBot, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    asked = []
-
-    def nothing(number: int) -> None:
-        asked.append(number)
-
-    monkeypatch.setattr(replaying.player, "picture", nothing)
-    replaying.seek(replaying.player.duration_s)
+def test_a_tap_without_a_picture_is_not_tried_again_and_again(replaying: Replaying, qtbot: QtBot) -> None:
+    made = []
+    replaying.fitter.made.connect(lambda number, picture: made.append((number, picture is None)))
     for _ in range(3):
-        replaying.show_tap(2)
-        qtbot.wait(150)
-        replaying.show_tap(3)
-        qtbot.wait(150)
-    qtbot.waitUntil(lambda: not replaying._fitting, timeout=LONG_MS)
-    assert sorted(asked) == sorted(set(asked)) and {2, 3} <= set(asked)
+        for number in (999, 2):  # there is no tap 999
+            replaying.show_tap(number)
+            replaying._show(set())
+            qtbot.waitUntil(lambda: not replaying._stay.isActive(), timeout=LONG_MS)
+            qtbot.waitUntil(lambda: not replaying.fitter.busy, timeout=LONG_MS)
+    assert made == [(999, True), (2, False)]
 
 
-def test_nothing_is_shown_after_it_was_closed(replaying: Replaying, qtbot: QtBot) -> None:
+def test_fits_go_on_after_their_process_has_died(replaying: Replaying, qtbot: QtBot) -> None:
+    replaying.show_tap(1)
+    qtbot.waitUntil(lambda: replaying.fitter.busy, timeout=LONG_MS)
+    process = replaying.fitter._process
+    assert process is not None
+    process.kill()
+    qtbot.waitUntil(lambda: 1 in replaying._without, timeout=LONG_MS)
+    replaying.show_tap(2)
+    qtbot.waitUntil(lambda: 2 in replaying.player.model.pictures, timeout=LONG_MS)
+
+
+def test_nothing_is_left_after_it_was_closed(replaying: Replaying, qtbot: QtBot, nothing_left: None) -> None:
     replaying.step_tap(1)
-    qtbot.waitUntil(lambda: replaying._fitting, timeout=LONG_MS)
+    qtbot.waitUntil(lambda: replaying.fitter.busy, timeout=LONG_MS)
     replaying.close()
     qtbot.wait(50)
     assert replaying.player.model.pictures == {}
+
+
+def test_a_jump_back_keeps_the_pictures(replaying: Replaying, qtbot: QtBot) -> None:
+    replaying.step_tap(1)
+    qtbot.waitUntil(lambda: 0 in replaying.player.model.pictures, timeout=LONG_MS)
+    replaying.seek(0.0)
+    assert set(replaying.player.model.pictures) == {0}

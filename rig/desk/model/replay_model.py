@@ -141,6 +141,10 @@ class ReplayModel:
             "fit_curve": [],
         }
 
+    def keep_picture(self, number: int, picture: Fields) -> None:
+        """A picture that was made elsewhere: from now on it is there, wherever the replay is."""
+        self._taps[number] = self.model.pictures[number] = picture
+
     def picture(self, number: int) -> Fields | None:
         """The picture of a tap, fitted when first asked for; None if there is no such tap."""
         # Late: the fits take a second to load, and a session is to be there at once.
