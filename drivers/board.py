@@ -18,7 +18,7 @@ from drivers.link.framing import LinkDamage, Unwrapper, wrap
 from drivers.link.hello import read_hello
 from drivers.link.rowcoding import RowCoding
 from drivers.ports import Wire
-from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
+from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame, Status
 
 #: Opening a port resets many boards: their boot loader may take seconds.
 BOOT_S = 6.0
@@ -54,6 +54,7 @@ class BoardBench(Bench):
         self._number = 0
         self._spoken_s = 0.0  # when something was last sent
         self._tick: int | None = None  # of the newest row placed, unwrapped
+        self._status = 0  # of the newest row placed
         self._read_tick: int | None = None  # of the newest row handed to the owner
         self._disorder = 0
         self._rejected = 0  # frames with good check sums that this bench cannot have sent
@@ -106,6 +107,7 @@ class BoardBench(Bench):
         self._frames, self._blocks, self._notices = [], [], []
         self._answers.clear()
         self._tick = self._read_tick = None
+        self._status = 0
         self._disorder = 0
         self._restarted = ""
 
@@ -156,6 +158,10 @@ class BoardBench(Bench):
             self._send(ms.Heartbeat(self._read_tick))
 
     def enable(self) -> int:
+        # A lock an earlier host left behind: not every board ends it with the drive.
+        if self._status & Status.LOCKED and not self._status & Status.ENABLED:
+            with suppress(BenchRefused):  # the row was of before its end
+                self.unlock()
         return self._command(ms.Code.ENABLE)[0]
 
     def drive(self, target_v: float, slew_v_per_s: float) -> int:
@@ -308,6 +314,7 @@ class BoardBench(Bench):
         self._frames.append(frame)
         self._blocks.append(block)
         self._tick = int(block.tick[-1])
+        self._status = frame.status
 
     def _unwrapped(self, tick: int) -> int:
         """The tick nearest to the newest row whose low 32 bits are `tick`."""

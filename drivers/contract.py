@@ -4,7 +4,8 @@ Lifecycle:  closed --open--> idle --enable--> powered --halt/trip--> idle --clos
 
 Every command is acknowledged with the board tick at which it took effect. The board, not the host,
 runs ramps, times taps and holds the drive register still while it is locked. After `heartbeat` has
-been missing for `heartbeat_timeout_s` the board halts by itself and latches.
+been missing for `heartbeat_timeout_s` the board halts by itself and latches. A latch and a fresh arm end
+a lock: no drive goes on that the host could not take back.
 """
 
 from __future__ import annotations
@@ -98,7 +99,10 @@ class Bench(ABC):
 
     @abstractmethod
     def enable(self) -> int:
-        """Power stage on at 0 V; tick of effect. Raises BenchRefused while latched or turning."""
+        """Power stage on at 0 V, its register not locked; tick of effect.
+
+        Raises BenchRefused while latched or turning. Of a drive that is on already it changes nothing.
+        """
 
     @abstractmethod
     def drive(self, target_v: float, slew_v_per_s: float) -> int:
@@ -117,7 +121,10 @@ class Bench(ABC):
 
     @abstractmethod
     def unlock(self) -> tuple[int, int]:
-        """End the lock; (tick, number of writes to the drive register while locked)."""
+        """End the lock; (tick, number of writes to the drive register while locked).
+
+        Raises BenchRefused if it is not locked: after a latch nobody can vouch for the interval.
+        """
 
     @abstractmethod
     def tap(self, impulse_n_m_s: float) -> int:

@@ -5,6 +5,9 @@
     powered, falling --watchdog | stall | current | guard | stop | bridge--> off and latched
     off and latched --clear_latch, cause gone and crank at standstill--> off
 
+A lock of the drive register ends with `unlock`, with a latch, and whenever the drive is armed or a latch is cleared
+while it is off: the host that set it may have died, and the next one must find a register it can take back.
+
 Everything here happens between two rows. `row` is the number of rows sampled since boot.
 """
 
@@ -124,6 +127,7 @@ class Board:
         if self.turning:
             raise BenchRefused("the crank is still turning; wait for standstill before arming")
         self.enabled = True
+        self.locked = False  # by a host that is gone: a drive that goes on must be one that can be changed
         self._target_v = 0.0
         self._plant.set_drive(0.0)
         self._plant.motor(DRIVEN)
@@ -191,14 +195,15 @@ class Board:
         return self._free_row
 
     def clear_latch(self) -> None:
-        if self.latch is None:
-            return
-        contact = self._open_contact()
-        if contact:
-            raise BenchRefused(f"the latch stays set: {contact}")
-        if self.turning:
-            raise BenchRefused("the latch stays set while the crank is still turning")
-        self.latch = None
+        if self.latch is not None:
+            contact = self._open_contact()
+            if contact:
+                raise BenchRefused(f"the latch stays set: {contact}")
+            if self.turning:
+                raise BenchRefused("the latch stays set while the crank is still turning")
+            self.latch = None
+        if not self.enabled:  # the lock of a drive that is on is ended, and its writes told, by `unlock` alone
+            self.locked = False
 
     def restart(self) -> None:
         """The processor starts anew: drive off, lock, latch and ramp forgotten."""
@@ -269,5 +274,6 @@ class Board:
 
     def _cut(self, cause: str) -> None:
         self._off(COASTING)
+        self.locked = False
         self.latch = cause
         self._tell("latch", {"cause": cause})

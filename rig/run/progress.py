@@ -278,23 +278,16 @@ class Walker:
 
     # -- after a trip ----------------------------------------------------------------------------------
 
-    def go_back(self) -> list[cm.Command]:
-        """Begin the level that was broken off again, as a new one at the same drive; the drive is off."""
-        made: list[cm.Command] = [cm.UnlockDrive()] if self.locked else []
+    def go_back(self) -> None:
+        """Begin the level that was broken off again, as a new one at the same drive; the drive is off.
+
+        A lock of the interval that was broken off has ended with the drive, or ends as it is armed.
+        """
         self._course, self._at = from_the_drive(self._course, self._at, self._level)
         self._begun = self._strike_from = self._asked_tick = None
         self._level = None
         self._from_v = 0.0
         self.enabled = False
-        return made
-
-    @property
-    def locked(self) -> bool:
-        """Whether the drive register is frozen for an interval that has not ended."""
-        if self.done or self._begun is None:
-            return False
-        action = self._course[self._at]
-        return isinstance(action, ac.Watch | ac.LetGo) or self._strike_from is not None
 
     # -- ending ----------------------------------------------------------------------------------------
 

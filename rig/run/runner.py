@@ -233,7 +233,8 @@ class Runner:
             self._exit = (DONE, "done")
             self._how = self._still_from = None
             self.state = RUNNING
-            return self._walker.go_back()
+            self._walker.go_back()
+            return []
         if "end" in kinds or "halt" in kinds:
             return [self._finish()]
         if "go_on" in kinds:

@@ -263,6 +263,42 @@ class BenchConformance:
             owner.bench.lock()
         owner.bench.unlock()
 
+    def test_a_latch_ends_the_lock(self, owner: Owner) -> None:
+        """A host that dies in an analysed interval leaves a register the next one can write to."""
+        if not owner.hello.capabilities.lock:
+            pytest.skip("no lock")
+        self.spin(owner)
+        owner.bench.lock()
+        owner.run(2.0 * owner.hello.heartbeat_timeout_s, beat=False)
+        assert owner.status & Status.LATCHED and not owner.status & Status.LOCKED
+        with pytest.raises(BenchRefused):
+            owner.bench.unlock()  # there is no count that anybody could vouch for
+        owner.run_until(lambda: owner.allows(owner.bench.clear_latch), self.coast_s)
+        self.spin(owner)
+        owner.bench.drive(0.5 * self.spin_v, self.slew_v_per_s)
+        owner.bench.lock()
+        assert owner.bench.unlock()[1] == 0
+
+    @pytest.mark.parametrize("clear_first", [True, False])
+    def test_a_fresh_arm_ends_the_lock(self, owner: Owner, clear_first: bool) -> None:
+        if not owner.hello.capabilities.lock:
+            pytest.skip("no lock")
+        self.spin(owner)
+        owner.bench.lock()
+        owner.bench.enable()  # of a drive that is on it changes nothing,
+        owner.bench.clear_latch()  # and there is no latch
+        with pytest.raises(BenchRefused):
+            owner.bench.drive(0.5 * self.spin_v, self.slew_v_per_s)
+        owner.bench.halt(Halt.COAST)
+        owner.run(0.2)
+        assert owner.status & Status.LOCKED  # a halt of the host's own leaves it: the write is counted
+        if clear_first:
+            owner.bench.clear_latch()
+        owner.run_until(lambda: owner.allows(owner.bench.enable), self.coast_s)
+        owner.bench.drive(0.5 * self.spin_v, self.slew_v_per_s)
+        owner.run(0.2)
+        assert owner.status & Status.ENABLED and not owner.status & Status.LOCKED
+
     # Halts
 
     @pytest.mark.parametrize("how", list(Halt))

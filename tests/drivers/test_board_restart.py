@@ -51,6 +51,29 @@ def test_a_restart_in_the_middle_of_a_run_is_a_fault(rig: Rig) -> None:
     assert int(again.blocks[0].tick[0]) < 1_000_000  # it counts from the beginning
 
 
+def test_a_board_that_keeps_a_lock_over_its_latch_is_unlocked_before_it_is_armed(rig: Rig) -> None:
+    """Not every board ends a lock with the drive; a host that armed such a one could not take the drive back."""
+    rig.spin()
+    board = rig.end._bench._board  # type: ignore[attr-defined]
+    rig.bench.halt(Halt.COAST)
+    rig.owner.run(0.1)
+    arm = board.enable
+
+    def arm_and_keep() -> None:
+        locked = board.locked
+        arm()
+        board.locked = locked
+
+    board.enable, board.locked = arm_and_keep, True
+    rig.owner.run(0.1)
+    assert rig.owner.status & Status.LOCKED
+    rig.owner.run_until(lambda: rig.owner.allows(rig.bench.enable), 60.0)
+    rig.bench.drive(2.0, 8.0)
+    rig.owner.run(0.5)
+    assert rig.owner.status & Status.ENABLED and not rig.owner.status & Status.LOCKED
+    assert rig.carried.count("unlock") == 1
+
+
 def test_rows_from_before_a_restart_are_handed_over_first(rig: Rig) -> None:
     rig.end.turn()
     rig.cable.clock.sleep_s(0.1)
