@@ -1,6 +1,6 @@
 """Serial ports and TCP links of this machine. The only module that imports pyserial.
 
-An address is what pyserial opens: a device ("/dev/ttyACM0", "COM3") or "socket://HOST:PORT".
+An address is a device ("/dev/ttyACM0", "COM3") or "socket://HOST:PORT".
 """
 
 from __future__ import annotations
@@ -54,17 +54,17 @@ class Wire(Protocol):
 
 
 class SerialWire:
-    """A serial port or TCP link, for this process alone.
+    """A serial port or TCP link, for this process alone; what is at its end is named in sentences.
 
-    LinkError if it cannot be opened: absent, in use, not permitted.
+    LinkError if it cannot be opened: malformed, absent, in use, not permitted.
     """
 
-    def __init__(self, address: str, baud: int) -> None:
-        self._address = address
-        tcp = address.startswith("socket://")
-        if tcp and not _complete(address):
-            raise LinkError(f"{address} cannot be opened: expected socket://HOST:PORT")
-        settings = {} if "://" in address else {"exclusive": True}
+    def __init__(self, address: str, baud: int, end: str = "the bench", device: str = "the board") -> None:
+        self._address, self._end, self._device = address, end, device
+        if wrong := malformed(address):
+            raise LinkError(wrong)
+        self._tcp = tcp = address.startswith("socket://")
+        settings = {} if tcp else {"exclusive": True}
         try:
             self._port = serial.serial_for_url(
                 address, baudrate=baud, timeout=0, write_timeout=WRITE_S, **settings
@@ -102,7 +102,7 @@ class SerialWire:
             else:
                 self._port.write(data)
         except serial.SerialTimeoutException:
-            raise LinkTimeout(f"{self._address} takes no more bytes: the board does not read") from None
+            raise LinkTimeout(f"{self._address} takes no more bytes: {self._device} does not read") from None
         except (serial.SerialException, OSError, ValueError, TypeError) as error:
             raise self._gone(error) from None
 
@@ -125,12 +125,30 @@ class SerialWire:
             line.close()  # pyserial leaves one open whose peer has reset it
 
     def _gone(self, error: Exception) -> LinkError:
-        return LinkError(f"the line to the bench is down ({self._address}): unplugged, or the board has gone")
+        # A serial port that another program has is not opened at all; a TCP port takes up its next caller and hangs up.
+        why = f"unplugged, or {self._device} has gone"
+        if self._tcp:
+            why = f"unplugged, {self._device} has gone, or another program has it"
+        return LinkError(f"the line to {self._end} is down ({self._address}): {why}")
 
 
-def open_wire(address: str, baud: int = 1_000_000) -> SerialWire:
-    """Open a serial port or TCP link exclusively. LinkError, with the reason, if that cannot be done."""
-    return SerialWire(address, baud)
+def open_wire(
+    address: str, baud: int = 1_000_000, *, end: str = "the bench", device: str = "the board"
+) -> SerialWire:
+    """Open a serial port or TCP link exclusively. LinkError, with the reason, if that cannot be done.
+
+    `end` and `device` are what its sentences call the far end and what is plugged in there.
+    """
+    return SerialWire(address, baud, end, device)
+
+
+def malformed(address: str) -> str:
+    """A sentence about an address that cannot be one, "" if it may be: that needs no line to be tried."""
+    if address.startswith("socket://"):
+        return "" if _complete(address) else f"{address} cannot be opened: expected socket://HOST:PORT"
+    if "://" in address:
+        return f"{address} cannot be opened: expected a serial device or socket://HOST:PORT"
+    return ""
 
 
 NO_PORT, IN_USE, NO_TTY = "there is no such port", "another program has it open", "it is no serial port"

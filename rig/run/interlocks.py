@@ -15,6 +15,7 @@ from drivers.channels import ChannelTable
 from drivers.contract import Halt, Notice
 from drivers.rows import RowBlock, Status
 from rig.description import DEFAULT_HALTS, RigDescription
+from rig.run.figures import apart
 from rig.run.turning import TurnCounter
 from rig.run.winding import WindingModel
 
@@ -107,6 +108,11 @@ class Interlocks:
     def flap_hz(self) -> float:
         return self.crank.flap_hz
 
+    @property
+    def tripped(self) -> bool:
+        """Whether a limit was crossed since the drive was last armed."""
+        return bool(self._latched)
+
     def margins(self) -> tuple[Margin, ...]:
         """Each limit with the largest value of the last frame."""
         return tuple(self._margins.values())
@@ -162,17 +168,18 @@ class Interlocks:
         trips: list[Trip] = []
         limit = self._rig.limits.stale_s
         if age_s > limit:
-            sentence = f"no rows came from the bench for {1e3 * age_s:.0f} ms, more than {1e3 * limit:.0f} ms"
-            self._trip(trips, "stale", sentence, age_s, limit, self._last_tick or 0)
+            age, most = apart(1e3 * age_s, 1e3 * limit, 0)
+            sentence = f"no rows came from the bench for {age} ms (limit {most} ms)"
+            # The newest row is the last moment of board time that is known: what is told came after it.
+            self._trip(trips, "stale", sentence, age_s, limit, self._last_tick or 0, when="after")
         return trips
 
     def disk(self, free_bytes: float) -> list[Trip]:
         trips: list[Trip] = []
         limit = self._rig.limits.disk_reserve_bytes
         if free_bytes < limit:
-            sentence = (
-                f"{free_bytes / 1e6:.0f} MB of disk are left, less than the reserve of {limit / 1e6:.0f} MB"
-            )
+            free, least = apart(free_bytes / 1e6, limit / 1e6, 0)
+            sentence = f"{free} MB of disk were left (reserve {least} MB)"
             self._trip(trips, "disk", sentence, free_bytes, limit, self._last_tick or 0)
         return trips
 
@@ -208,7 +215,8 @@ class Interlocks:
     ) -> None:
         self._margins[cause] = Margin(cause, value, limit, unit)
         if value > limit:
-            sentence = f"{what} {value:.2f} {unit} exceeded {limit:.2f} {unit}"
+            told, most = apart(value, limit, 2)
+            sentence = f"{what} {told} {unit} exceeded {most} {unit}"
             self._trip(trips, cause, sentence, value, limit, tick)
 
     def _heat(self, trips: list[Trip], mean_square: float, tick: int) -> None:
@@ -231,7 +239,8 @@ class Interlocks:
         value, limit = (ends[1], limits.travel_high_rad) if high else (ends[0], limits.travel_low_rad)
         self._margins["travel"] = Margin("travel", math.degrees(value), abs(math.degrees(limit)), "deg")
         if outside:
-            sentence = f"body angle {math.degrees(value):.2f} deg went past {math.degrees(limit):.2f} deg"
+            told, most = apart(math.degrees(value), math.degrees(limit), 2)
+            sentence = f"body angle {told} deg went past {most} deg"
             self._trip(trips, "travel", sentence, value, limit, tick)
 
     def _stall(self, trips: list[Trip], volts: float, flap_hz: float, tick: int) -> None:
@@ -259,20 +268,28 @@ class Interlocks:
         limit = self._rig.limits.loss_fraction
         self._margins["loss"] = Margin("loss", share, limit, "1")
         if total >= LOSS_ROWS and share > limit:
-            sentence = (
-                f"{100 * share:.1f} % of the rows of the last 10 s were lost, more than {100 * limit:.1f} %"
-            )
+            lost, most = apart(100 * share, 100 * limit, 1)
+            span_s = total / self._rig.sample_hz  # less than the window where the run is younger
+            sentence = f"{lost} % of the rows of the last {span_s:.1f} s were lost (limit {most} %)"
             self._trip(trips, "loss", sentence, share, limit, tick)
 
     def _trip(
-        self, trips: list[Trip], cause: str, sentence: str, value: float, limit: float, tick: int
+        self,
+        trips: list[Trip],
+        cause: str,
+        sentence: str,
+        value: float,
+        limit: float,
+        tick: int,
+        when: str = "at",
     ) -> None:
         if cause in self._latched:
             return
         self._latched.add(cause)
         halt = self._rig.halts.get(cause, DEFAULT_HALTS[cause])
         at_s = (tick - (self._origin or 0)) / self._tick_hz
-        full = f"{sentence} at {at_s:.3f} s; drive off ({halt.value}): {WHAT_NOW[cause]}."
+        # The time comes first: behind a limit it would read as if it belonged to that.
+        full = f"{when} {at_s:.3f} s, {sentence}; drive off ({halt.value}): {WHAT_NOW[cause]}."
         trips.append(Trip(cause, full[0].upper() + full[1:], value, limit, halt))
 
 

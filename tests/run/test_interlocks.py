@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Callable
 from dataclasses import replace
 
@@ -18,6 +19,7 @@ from rig.bench_source import channel_table
 from rig.description import DEFAULT_HALTS, MotorDescription
 from rig.files.rig import read_rig
 from rig.run.cautions import CAUTIONS, Acknowledgement
+from rig.run.figures import apart
 from rig.run.interlocks import Interlocks
 from rig.run.turning import TurnCounter
 from rig.run.winding import WindingModel
@@ -57,7 +59,8 @@ def test_trip(cause: str) -> None:
     assert len(causes) == len(set(causes))  # latched: told once
     trip = next(trip for trip in run.outcome.trips if trip.cause == cause)
     assert words.lower() in trip.sentence.lower()
-    assert trip.sentence.endswith(("before arming again.", "arm again.")) and " at " in trip.sentence
+    assert trip.sentence.endswith(("before arming again.", "arm again."))
+    assert re.match(r"At \d+\.\d{3} s, [a-z0-9]", trip.sentence), trip.sentence
     assert trip.halt is DEFAULT_HALTS[cause]
     kinds = run.book.kinds()
     assert kinds.index("trip") < kinds.index("halt") < kinds.index("finished")
@@ -68,7 +71,7 @@ def test_trip(cause: str) -> None:
 def test_disk_reserve() -> None:
     run = go(SPIN, book=Book(free_bytes=1000))
     assert run.outcome.exit_code == 3
-    assert "disk" in run.outcome.reason
+    assert re.match(r"At \d+\.\d{3} s, 0 MB of disk were left \(reserve \d+ MB\);", run.outcome.reason)
 
 
 def test_a_failing_journal_takes_the_drive_away() -> None:
@@ -82,7 +85,45 @@ def test_a_failing_journal_takes_the_drive_away() -> None:
 def test_silence_is_stale_data() -> None:
     run = go(SPIN, prepare=at(lambda bench: bench.faults.fall_silent()))
     assert run.outcome.exit_code == 4
-    assert "no rows came" in run.outcome.reason.lower()
+    # The time of the newest row, and in a clause of its own: it is no part of the limit.
+    words = r"After \d+\.\d{3} s, no rows came from the bench for (\d+) ms \(limit (\d+) ms\);"
+    told = re.match(words, run.outcome.reason)
+    assert told is not None and int(told[1]) > int(told[2]) == 200, run.outcome.reason
+
+
+@pytest.mark.parametrize(
+    ("value", "limit", "digits", "told"),
+    [
+        (1.2, 1.0, 1, ("1.2", "1.0")),
+        (1.0004, 1.0, 1, ("1.0004", "1.0000")),
+        (200.2, 200.0, 0, ("200.2", "200.0")),
+        (-61.0001, -61.0, 2, ("-61.0001", "-61.0000")),
+        (2.0, 2.0, 1, ("2.0", "2.0")),
+        (1.0 + 1e-15, 1.0, 1, ("1.000000000", "1.000000000")),
+    ],
+)
+def test_a_value_and_its_limit_read_differently_if_they_differ(
+    value: float, limit: float, digits: int, told: tuple[str, str]
+) -> None:
+    assert apart(value, limit, digits) == told
+
+
+def test_lost_rows_are_told_of_the_span_they_were_lost_in() -> None:
+    """Barely above the limit of 1 %, in a run younger than the window: neither "1.0 % of 1.0 %" nor "10 s"."""
+    rig = boom()
+    table = channel_table(rig)
+    interlocks = Interlocks(rig, table, 1_000_000)
+    raw = np.zeros((20, len(table)), dtype=np.int32)
+    trips, at = [], 0
+    for k in range(100):
+        lost = 21 if k == 99 else 0
+        at += lost
+        tick = (np.arange(at, at + 20, dtype=np.uint64) + np.uint64(1)) * np.uint64(1000)
+        at += 20
+        trips += interlocks.check(RowBlock(tick=tick, raw=raw, lost_rows=lost))
+    (trip,) = trips
+    assert trip.cause == "loss"
+    assert "1.04 % of the rows of the last 2.0 s were lost (limit 1.00 %)" in trip.sentence
 
 
 def test_a_pulled_cable() -> None:
