@@ -337,7 +337,7 @@ class Window(QMainWindow):
             halts = event.key() in HALT_KEYS and not event.isAutoRepeat()
             if halts and self.running and self.link is not None and self.link.model.may_be_driven:
                 self.halt()
-        return super().eventFilter(watched, event)
+        return False  # every event of the program comes by here: not a call more than needed
 
     def _may_go(self) -> bool:
         """Edits that are in no file are not thrown away without asking, and asking is never in a run's way."""

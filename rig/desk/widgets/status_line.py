@@ -151,7 +151,10 @@ class Cell(QWidget):
         """Show a value."""
         self._alert = alert
         if value != self.value.full_text:
-            self.updateGeometry()
+            before = self.wanted()
+            self.value.tell(value, hint)
+            if self.wanted() != before:  # most values change many times a second and fit where they stand
+                self.updateGeometry()
         self.value.tell(value, hint)
         self.value.setAccessibleName(f"{self.caption.full_text}: {value}")
         set_kind(self.value, "alerting" if alert else "")
