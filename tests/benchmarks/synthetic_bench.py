@@ -1,6 +1,8 @@
 """A bench whose every sample is a known function of its tick, at any rate; served as a board when run.
 
-python synthetic_bench.py ROW_HZ FRAME_ROWS CHANNELS pty|tcp
+python synthetic_bench.py ROW_HZ FRAME_ROWS CHANNELS pty|tcp [FLAP_HZ UNTIL_S]
+
+The crank is at rest, or turns at FLAP_HZ until UNTIL_S of the board's time and rests from then on.
 """
 
 from __future__ import annotations
@@ -23,6 +25,7 @@ from drivers.standin.places import PtyPlace, TcpPlace
 from drivers.standin.serving import Server
 
 TICK_HZ = 1_000_000
+COUNTS_PER_TURN = 2**20
 MEASURES = ("body angle", "crank angle", "motor current", "motor voltage", "vertical load", "carriage height")
 
 
@@ -38,24 +41,38 @@ def channel_table(channels: int) -> ChannelTable:
             "motor current": "A",
         }.get(measures)
         unit = unit or {"motor voltage": "V"}.get(measures, "rad")
-        scale = 2.0 * math.pi / 2**20 if unit == "rad" else 1e-6
+        scale = 2.0 * math.pi / COUNTS_PER_TURN if unit == "rad" else 1e-6
         made.append(Channel(f"c{index}", measures, unit, scale))
     return ChannelTable(tuple(made))
 
 
-def samples(tick: NDArray[np.int64], channels: int) -> NDArray[np.int32]:
-    """Raw values, shape (n, channels): a different pseudo-random number in every place, 15 bits wide."""
+def samples(
+    tick: NDArray[np.int64], channels: int, flap_hz: float = 0.0, until_s: float = 0.0
+) -> NDArray[np.int32]:
+    """Raw values, shape (n, channels): a different pseudo-random number in every place, 14 bits wide; the crank turns
+    as often as asked for. ValueError if it would turn further than raw values reach."""
     spread = (tick[:, None] * 2654435761 + np.arange(channels) * 40503) & 0xFFFFFFFF
     raw = (spread ^ (spread >> 15)) & 0x3FFF
-    raw[:, 1] = 0  # a crank at rest: no flap rate is exceeded
+    counts_per_s, until_tick = round(flap_hz * COUNTS_PER_TURN), round(until_s * TICK_HZ)
+    if counts_per_s * until_s >= 2**31:
+        raise ValueError(f"the crank cannot turn at {flap_hz:g} Hz for {until_s:g} s")
+    raw[:, 1] = np.minimum(tick, until_tick) * counts_per_s // TICK_HZ
     return raw.astype(np.int32)
 
 
 class SyntheticBench(Bench):
     """Obeys every command and measures nothing."""
 
-    def __init__(self, clock: Clock, row_hz: float, frame_rows: int, channels: int) -> None:
+    def __init__(
+        self,
+        clock: Clock,
+        row_hz: float,
+        frame_rows: int,
+        channels: int,
+        turns: tuple[float, float] = (0.0, 0.0),
+    ) -> None:
         self._clock = clock
+        self._turns = turns
         self._frame_rows = frame_rows
         self._period = round(TICK_HZ / row_hz)
         self._channels = channels
@@ -84,7 +101,7 @@ class SyntheticBench(Bench):
         while self._frames < due:
             first = self._frames * span
             tick = np.arange(first, first + span, self._period, dtype=np.int64)
-            raw = samples(tick, self._channels)
+            raw = samples(tick, self._channels, *self._turns)
             frames.append(
                 RowFrame(
                     self._frames,
@@ -136,9 +153,10 @@ class SyntheticBench(Bench):
 
 def main() -> None:
     row_hz, frame_rows, channels, where = float(sys.argv[1]), int(sys.argv[2]), int(sys.argv[3]), sys.argv[4]
+    turns = (float(sys.argv[5]), float(sys.argv[6])) if len(sys.argv) > 5 else (0.0, 0.0)
     clock = HostClock()
     pace = SlippingClock(clock)
-    board = BoardEnd(SyntheticBench(pace, row_hz, frame_rows, channels), pace)
+    board = BoardEnd(SyntheticBench(pace, row_hz, frame_rows, channels, turns), pace)
     place = TcpPlace() if where == "tcp" else PtyPlace()
     going = [True]
     signal.signal(signal.SIGINT, lambda *_: going.clear())
