@@ -108,7 +108,7 @@ def test_what_is_drawn_is_what_the_analysis_told(view: TapView) -> None:
     model = run().model
     view.refresh(model)
     told = model.pictures[2]
-    assert view.title.text() == "Tap 2" and view.position.text() == "3 of 3"
+    assert view.title.text() == "Tap 2" and view.position.text() == "of 0 to 2"
     assert np.array_equal(view.rows.xs, told["time_s"])
     assert np.array_equal(view.rows.low, told["low_deg"]) and np.array_equal(view.rows.high, told["high_deg"])
     for curve, names in (
@@ -167,7 +167,7 @@ def test_buttons_do_the_same(view: TapView, qtbot: QtBot) -> None:
     assert view.earlier.isEnabled() and not view.later.isEnabled()
     with qtbot.waitSignal(view.chosen) as told:
         qtbot.mouseClick(view.earlier, Qt.MouseButton.LeftButton)
-    assert told.args == [1] and view.position.text() == "2 of 3"
+    assert told.args == [1] and view.position.text() == "of 0 to 2"
 
 
 def test_a_new_tap_comes_to_the_front_and_news_of_an_old_one_do_not(view: TapView) -> None:

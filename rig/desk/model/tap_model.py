@@ -48,11 +48,16 @@ class TapCurves:
 
 @dataclass(frozen=True)
 class TapPage:
-    """Tap `number`, at `place` (from 1) of `count`. `missing` says why there is no picture or no fit, or is empty."""
+    """Tap `number`, at `place` (from 1) of `count`, whose numbers go from `first` to `last`.
+
+    `missing` says why there is no picture or no fit, or is empty.
+    """
 
     number: int
     place: int
     count: int
+    first: int
+    last: int
     level: str
     shape: str
     outcome: str
@@ -86,6 +91,8 @@ def tap_page(model: RunModel, number: int) -> TapPage | None:
         number=number,
         place=numbers.index(number) + 1,
         count=len(numbers),
+        first=numbers[0],
+        last=numbers[-1],
         level=_level(rung),
         shape=OUTCOME_SHAPES.get("" if mark is None else mark.outcome, "ring"),
         outcome="" if mark is None else OUTCOME_WORDS.get(mark.outcome, mark.outcome),

@@ -170,7 +170,7 @@ class TapView(SavablePlot):
             self.decay.tell(page.decay)
             self.mode.tell(page.mode)
             self.sentence.setText(page.sentence)
-            self.position.setText(f"{page.place} of {page.count}")
+            self.position.setText(f"of {page.first} to {page.last}")
             self.setAccessibleDescription(
                 f"{page.outcome}; decay rate {page.decay}; slow mode {page.mode}. {page.sentence}"
             )
