@@ -202,7 +202,8 @@ class Board:
             if self.turning:
                 raise BenchRefused("the latch stays set while the crank is still turning")
             self.latch = None
-        if not self.enabled:  # the lock of a drive that is on is ended, and its writes told, by `unlock` alone
+        # While the drive is on only `unlock` ends a lock, and tells its writes.
+        if not self.enabled:
             self.locked = False
 
     def restart(self) -> None:

@@ -268,9 +268,9 @@ class Interlocks:
         limit = self._rig.limits.loss_fraction
         self._margins["loss"] = Margin("loss", share, limit, "1")
         if total >= LOSS_ROWS and share > limit:
-            lost, most = apart(100 * share, 100 * limit, 1)
+            told, most = apart(100 * share, 100 * limit, 1)
             span_s = total / self._rig.sample_hz  # less than the window where the run is younger
-            sentence = f"{lost} % of the rows of the last {span_s:.1f} s were lost (limit {most} %)"
+            sentence = f"{told} % of the rows of the last {span_s:.1f} s were lost (limit {most} %)"
             self._trip(trips, "loss", sentence, share, limit, tick)
 
     def _trip(

@@ -324,7 +324,7 @@ def test_the_last_bytes_of_a_peer_that_closes_are_read_first(server: Server) -> 
     server.line.close()
     assert read(server.wire, 10) == b"last words"
     for wait_s in (0.5, 0.0):  # a port that serves one program hangs up on the next
-        with pytest.raises(LinkError, match="is down .*, or another program has it") as error:
+        with pytest.raises(LinkError, match=r"is down .*, or another program has it") as error:
             server.wire.read(wait_s)
         assert not isinstance(error.value, LinkTimeout)
 
