@@ -11,8 +11,12 @@ from PySide6.QtCore import QTimer
 from PySide6.QtWidgets import QApplication
 
 from rig.desk.model.memory import Memory
+from rig.desk.preloading import preload
 from rig.desk.sound import Sounds
 from rig.desk.window import Window
+
+#: By then the pages stand, and nobody has read the first one to its end.
+PRELOAD_MS = 1000
 
 
 def application() -> QApplication:
@@ -38,6 +42,7 @@ def run(session: Path | None = None) -> int:
     shown.show()
     if session is not None:
         QTimer.singleShot(0, lambda: shown.open_replay(str(session)))
+    QTimer.singleShot(PRELOAD_MS, preload)
     # Lets Python look after signals (Ctrl-C in the terminal) while Qt waits.
     awake = QTimer()
     awake.timeout.connect(lambda: None)
