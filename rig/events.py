@@ -32,6 +32,7 @@ rearmed         by                         the operator goes on
 refused         reason                     the board does not let itself be armed, or an input was for nothing
 loss            rows, frames, overruns
 notice          anything the board told
+unread          records, text              so many records of the journal could not be read: put in by `haltere recover`
 clock           drift_ppm, drift_std_ppm, span_s, longest_delay_s   board clock against host clock;
                 longest_away_s, longest_gap_s   not reading; between two readings with rows
 finished        exit_code, reason
@@ -49,7 +50,7 @@ KINDS = frozenset(
         "run", "armed", "drive", "level", "settled", "quiet", "quiet_end", "tap", "tap_end", "tap_excluded",
         "observe", "observe_end", "level_end", "release", "release_end", "mark", "sync", "zero", "prompt",
         "acknowledged", "trip", "halt", "turning", "standstill", "loss", "notice", "clock", "finished",
-        "waiting", "rearmed", "refused", "tap_reason",
+        "waiting", "rearmed", "refused", "tap_reason", "unread",
     )
 )  # fmt: skip
 

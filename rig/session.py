@@ -9,7 +9,6 @@ Only `rig.session` and `rig.record` know HDF5.
 
 from __future__ import annotations
 
-import json
 from collections.abc import Mapping
 from pathlib import Path
 from types import TracebackType
@@ -18,13 +17,18 @@ from typing import TYPE_CHECKING, Any
 import h5py
 
 from rig.events import Event, unreadable
+from rig.record import recovery
 from rig.record.errors import Damaged
 from rig.record.inspection import inspect
+from rig.record.parts import Parts, damaged, text_attribute, whole_attribute
+from rig.record.recovery import Recovery
 from rig.record.stream import SamplerStream, Stream
 
 if TYPE_CHECKING:
     from rig.description import RigDescription
     from rig.steps import Protocol
+
+LOSS_COLUMNS = ("tick", "rows", "frames", "overruns")
 
 __all__ = ["SamplerStream", "Session", "Stream", "open_session"]
 
@@ -35,38 +39,32 @@ class Session:
     def __init__(self, path: Path, file: h5py.File) -> None:
         self.path = path
         self._file = file
-        self.created_utc = str(file.attrs["created_utc"])
-        self.software = str(file.attrs["software"])
-        columns = [file[f"losses/{name}"][:] for name in ("tick", "rows", "frames", "overruns")]
-        self.losses = [tuple(int(number) for number in row) for row in zip(*columns, strict=True)]
+        parts = Parts(file, path)
+        self.created_utc = text_attribute(file, "created_utc", path)
+        self.software = text_attribute(file, "software", path)
+        self.losses = _losses(parts)
         self.streams: Mapping[str, Stream] = {
-            name: Stream(group, path, self.losses if name == "board" else ())
-            for name, group in file["streams"].items()
+            name: Stream(parts.group(f"/streams/{name}"), path, self.losses if name == "board" else ())
+            for name in parts.group("/streams")
         }
         self.samplers: Mapping[str, SamplerStream] = {
             name: SamplerStream(group, path) for name, group in file.get("samplers", {}).items()
         }
-        self.rig_text = _text(file, "rig")
-        self.protocol_text = _text(file, "protocol")
-        self.header: dict[str, Any] = _object(_text(file, "header"), "header")
-        final = json.loads(_text(file, "results/final"))
+        self.rig_text = parts.text("/rig")
+        self.protocol_text = parts.text("/protocol")
+        self.header: dict[str, Any] = parts.json_object("/header")
+        final = parts.json("/results/final")
         if final is not None and not isinstance(final, dict):
-            raise ValueError("results/final is not a JSON object")
-        live = json.loads(_text(file, "results/live"))
+            raise damaged(path, "/results/final", "a JSON object or null")
+        live = parts.json("/results/live")
         if not isinstance(live, list):
-            raise ValueError("results/live is not a JSON list")
+            raise damaged(path, "/results/live", "a JSON list")
         self.results: dict[str, Any] = {"live": live, "final": final}
         #: What worked out the final results: the software of the run, unless they were worked out anew.
         self.results_software = str(file["results/final"].attrs.get("software", self.software))
-        self.events: list[Event] = [
-            Event(int(tick), kind.decode(), _object(data, "an event's data"))
-            for tick, kind, data in zip(
-                file["events/tick"][:], file["events/kind"][:], file["events/data"][:], strict=True
-            )
-        ]
-        for event in self.events:
-            if words := unreadable(event):
-                raise ValueError(words)
+        self.events = _events(parts)
+        #: How its journal was found, None if that was whole.
+        self.recovered = _recovered(parts) if recovery.PLACE in file else None
 
     @property
     def rig(self) -> RigDescription:
@@ -110,29 +108,42 @@ def open_session(path: str | Path) -> Session:
     try:
         if "haltere_format" not in file.attrs:
             raise Damaged(f"{path} is not a Haltere session")
-        if int(file.attrs["haltere_format"]) != 1:
+        if whole_attribute(file, "haltere_format", place) != 1:
             raise Damaged(f"{path} is a session of a format this version does not read")
         inspect(file, place)
         return Session(place, file)
     except Damaged:
         file.close()
         raise
-    except (AttributeError, TypeError, RecursionError):
-        file.close()  # their words are about Python, not about the file
+    except (AttributeError, KeyError, OSError, RecursionError, RuntimeError, TypeError, ValueError):
+        file.close()  # their words are about Python or HDF5, not about the file
         raise Damaged(f"{path} is damaged: a part of it is missing or not of its kind") from None
-    except (KeyError, ValueError, OSError, RuntimeError) as error:
-        file.close()
-        words = str(error).strip("'\"").split("\n")[0]
-        raise Damaged(f"{path} is damaged: {words}") from None
 
 
-def _object(text: str | bytes, what: str) -> dict[str, Any]:
-    found = json.loads(text)
-    if not isinstance(found, dict):
-        raise ValueError(f"{what} is not a JSON object")
-    return found
+def _losses(parts: Parts) -> list[tuple[int, ...]]:
+    columns = {f"/losses/{name}": parts.whole(f"/losses/{name}") for name in LOSS_COLUMNS}
+    parts.same_length(columns)
+    return list(zip(*columns.values(), strict=True))
 
 
-def _text(file: h5py.File, name: str) -> str:
-    value = file[name][()]
-    return value.decode() if isinstance(value, bytes) else str(value)
+def _events(parts: Parts) -> list[Event]:
+    ticks, kinds, texts = (
+        parts.whole("/events/tick"),
+        parts.texts("/events/kind"),
+        parts.texts("/events/data"),
+    )
+    parts.same_length({"/events/tick": ticks, "/events/kind": kinds, "/events/data": texts})
+    events = []
+    for row, (tick, kind, text) in enumerate(zip(ticks, kinds, texts, strict=True)):
+        event = Event(tick, kind, parts.object_of(text, "/events/data", row))
+        if words := unreadable(event):
+            raise damaged(parts.path, "/events/data", f"what the analysis can read, {words}", row)
+        events.append(event)
+    return events
+
+
+def _recovered(parts: Parts) -> Recovery:
+    try:
+        return Recovery.from_json(parts.json_object(recovery.PLACE))
+    except ValueError:
+        raise damaged(parts.path, recovery.PLACE, "an account of a recovery") from None

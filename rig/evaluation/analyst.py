@@ -122,11 +122,11 @@ class Analyst:
         if event.kind == "level":
             self._close_visits()
             self.visits.append(VisitAnalysis(self.timeline.levels[-1]))
-        elif not self.visits:
+        elif not self.visits or self._of_a_level_unread(event):
             return []
         elif event.kind in ("quiet_end", "observe_end"):
             current = self.visits[-1]
-            if current.quiet is None:
+            if current.quiet is None and current.visit.quiet:  # none if its beginning could not be read
                 look_at_quiet(current, self.store, self.rig)
             return [self._level_verdict(event.tick)]
         elif event.kind in ("tap_end", "release_end"):
@@ -139,9 +139,18 @@ class Analyst:
             return self._close_visits()
         return []
 
+    def _of_a_level_unread(self, event: Event) -> bool:
+        """Whether an interval ends at a level whose beginning could not be read."""
+        ends = ("quiet_end", "observe_end", "tap_end", "release_end")
+        return (
+            self.timeline.unread and event.kind in ends and self.visits[-1].visit is not self.timeline.current
+        )
+
     def _tap(self, event: Event) -> list[Verdict]:
         current = self.visits[-1]
-        visit = current.visit.taps[-1]
+        visit = current.visit.ended_by(event)
+        if visit is None:
+            return []
         if current.quiet is None:
             look_at_quiet(current, self.store, self.rig)
         tap = analyse_tap(self.store, visit, self.rig)

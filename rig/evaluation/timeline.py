@@ -6,6 +6,12 @@ from dataclasses import dataclass, field
 
 from rig.events import Event
 
+#: What tells at which level a run is, or that it is at none.
+BOUND = frozenset(
+    ("level", "settled", "quiet", "quiet_end", "tap", "tap_end", "observe", "observe_end", "level_end", "release",
+     "release_end", "trip", "halt", "finished")
+)  # fmt: skip
+
 
 @dataclass
 class TapVisit:
@@ -36,6 +42,13 @@ class LevelVisit:
     quiet: list[tuple[int, int]] = field(default_factory=list)  # undisturbed, drive locked
     taps: list[TapVisit] = field(default_factory=list)
     writes: list[int] = field(default_factory=list)
+    gap_tick: int | None = None  # nothing is known of it from here on, unless it is told of again
+
+    def ended_by(self, event: Event) -> TapVisit | None:
+        """The tap whose observation an event ends; None where its beginning could not be read."""
+        number = event.data.get("tap")
+        last = self.taps[-1] if self.taps else None
+        return last if last is not None and number in (None, last.tap) else None
 
 
 class Timeline:
@@ -45,6 +58,7 @@ class Timeline:
         self.levels: list[LevelVisit] = []
         self.trips: list[Event] = []
         self.zeros: list[Event] = []
+        self.unread = False  # whether records of the journal are missing
         self._open_quiet: int | None = None
 
     @property
@@ -62,6 +76,7 @@ class Timeline:
     def add(self, event: Event) -> None:
         """Take the next event; kinds that say nothing about the course are passed over."""
         data = event.data
+        self._look_over_gap(event)
         level = self.current
         if event.kind == "level":
             if level is not None:
@@ -81,6 +96,11 @@ class Timeline:
             if level is not None:
                 level.end_tick = event.tick
             self._open_quiet = None
+        elif event.kind == "unread":
+            self.unread = True
+            if level is not None and level.gap_tick is None:
+                level.gap_tick = event.tick
+            self._open_quiet = None
         elif event.kind == "zero":
             self.zeros.append(event)
         elif event.kind == "tap_excluded":
@@ -93,6 +113,16 @@ class Timeline:
                 excluded.excluded = str(data["reason"])
         elif level is not None:
             self._add_within(level, event)
+
+    def _look_over_gap(self, event: Event) -> None:
+        """Whether the level goes on behind a stretch that could not be read; else it ended before, as far as known."""
+        level = self.current
+        if level is None or level.gap_tick is None or event.kind not in BOUND:
+            return
+        if event.data.get("level") == level.level and event.kind != "level":
+            level.gap_tick = None
+        else:
+            level.end_tick = level.gap_tick
 
     def _add_within(self, level: LevelVisit, event: Event) -> None:
         data = event.data
@@ -118,8 +148,10 @@ class Timeline:
                     by=str(data.get("by", "release" if event.kind == "release" else "tapper")),
                 )
             )
-        elif event.kind in ("tap_end", "release_end") and level.taps:
-            tap = level.taps[-1]
+        elif event.kind in ("tap_end", "release_end"):
+            tap = level.ended_by(event)
+            if tap is None:
+                return
             tap.end_tick = event.tick
             if data.get("writes") is not None:
                 tap.writes = int(data["writes"])

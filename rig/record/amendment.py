@@ -13,6 +13,7 @@ from rig.record import digests
 from rig.record.durability import sync_folder
 from rig.record.errors import Damaged, JournalFailure
 from rig.record.inspection import inspect
+from rig.record.refusals import refusal
 
 TEXT = h5py.string_dtype("utf-8")
 FINAL = "/results/final"
@@ -50,8 +51,7 @@ def write_results(session: Path, results: dict[str, Any], software: str = "") ->
         aside.replace(session)
         sync_folder(session.absolute().parent)
     except (OSError, RuntimeError) as error:
-        words = error.strerror if isinstance(error, OSError) and error.strerror else str(error).split("(")[0]
-        raise JournalFailure(f"{session} cannot be written: {words.strip()}") from error
+        raise JournalFailure(f"{session} cannot be written: {refusal(error, session)}") from error
     finally:
         aside.unlink(missing_ok=True)
 

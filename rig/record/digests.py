@@ -155,39 +155,54 @@ def stored(file: h5py.File) -> dict[str, dict[str, str]] | None:
 
 
 def problems(path: Path) -> list[str] | None:
-    """Everything in a file that is not what its digests say; None if the file holds none.
+    """Everything in a file that is not what its digests say, in words; None if the file holds none.
 
     Damaged if it cannot even be looked through.
     """
+    found = _differences(path)
+    return None if found is None else [words for _, words in found]
+
+
+def changed_places(path: Path) -> list[str] | None:
+    """The parts of a file that are not what their digests say, each once; None if the file holds none.
+
+    Damaged if it cannot even be looked through.
+    """
+    found = _differences(path)
+    return None if found is None else list(dict.fromkeys(place for place, _ in found))
+
+
+def _differences(path: Path) -> list[tuple[str, str]] | None:
     try:
         with h5py.File(path, "r") as file:
             inspect(file, path)
             told = stored(file)
+            if told is None:
+                return None
             found = of_file(file)
     except ValueError as error:
-        return [str(error)]
+        return [(PLACE, str(error))]
     except (OSError, RuntimeError, KeyError, AttributeError, TypeError, RecursionError):
         raise Damaged(f"{path} cannot be looked through") from None
-    if told is None:
-        return None
-    wrong = []
+    wrong: list[tuple[str, str]] = []
     for kind, words in (("datasets", ""), ("attributes", "the attributes of ")):
         for name in sorted({*told[kind], *found[kind]}):
             if name not in found[kind]:
-                wrong.append(f"{words}{name} are missing" if words else f"{name} is missing")
+                wrong.append((name, f"{words}{name} are missing" if words else f"{name} is missing"))
             elif name not in told[kind]:
-                wrong.append(f"{words}{name} came later" if words else f"{name} came later")
+                wrong.append((name, f"{words}{name} came later"))
             elif found[kind][name] == UNREADABLE:
-                wrong.append(f"{words}{name} cannot be read")
+                wrong.append((name, f"{words}{name} cannot be read"))
             elif found[kind][name] != told[kind][name]:
-                wrong.append(f"{words}{name} have changed" if words else f"{name} has changed")
+                wrong.append((name, f"{words}{name} have changed" if words else f"{name} has changed"))
     return wrong
 
 
 def carry_over(old: h5py.File, new: h5py.File, path: str) -> None:
     """Write the digests of one file to a copy in which the dataset at `path` is another; no other is touched.
 
-    Files from before there were digests stay without. ValueError if the digests cannot be read.
+    A file without digests stays without, so that it still shows that they are missing. ValueError if they cannot
+    be read.
     """
     told = stored(old)
     if told is None:

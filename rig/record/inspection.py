@@ -28,12 +28,12 @@ def inspect(file: h5py.File, path: Path) -> None:
         for name in group:
             link = group.get(name, getlink=True)
             if not isinstance(link, h5py.HardLink):
-                raise Damaged(f"{path}: {group.name}/{name} links to another place")
+                raise Damaged(f"{path}: {group.name.rstrip('/')}/{name} links to another place")
             item = group[name]
             # A group reached twice could hold itself, or groups without end.
             address = h5py.h5o.get_info(item.id).addr
             if address in seen:
-                raise Damaged(f"{path}: {group.name}/{name} stands in two places")
+                raise Damaged(f"{path}: {group.name.rstrip('/')}/{name} stands in two places")
             seen.add(address)
             if isinstance(item, h5py.Group):
                 look(item)
@@ -49,10 +49,15 @@ def inspect(file: h5py.File, path: Path) -> None:
     place = damaged_heap(path, columns)
     if place is not None:
         raise Damaged(f"{path}: the texts kept from byte {place} on are damaged")
-    if "board" not in file["streams"]:
+    streams = file.get("streams")
+    if not isinstance(streams, h5py.Group) or not isinstance(streams.get("board"), h5py.Group):
         raise Damaged(f"{path} has no stream of the board")
     for stream in file["streams"].values():
+        if not isinstance(stream, h5py.Group):
+            raise Damaged(f"{path} is damaged: {stream.name}: expected a group")
         for name, data in stream.items():
+            if not isinstance(data, h5py.Dataset):
+                raise Damaged(f"{path} is damaged: {data.name}: expected a column")
             wanted = {"tick": "u8", "time_s": "f8", "status": "u2"}.get(name, "i4")
             if data.ndim != 1 or data.dtype != np.dtype(wanted):
                 raise Damaged(

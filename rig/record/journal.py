@@ -1,34 +1,10 @@
-"""The journal: every frame and event of a run, appended as it comes, readable after any crash.
-
-Byte by byte (little-endian):
-
-    magic    8 bytes   b"HLTRJNL\\x01"        the last byte is the format version
-    records, one after the other:
-      type      u8     1 header, 2 row frame, 3 event, 4 result, 5 losses, 6 end, 7 samples
-      length    u32    of the payload
-      sequence  u32    0, 1, 2, ... without a gap
-      payload   `length` bytes
-      crc       u32    CRC-32 (as in IEEE 802.3) of type, length, sequence and payload
-
-The first record is the header: JSON with rig, protocol and calibration texts, the channel table, tick rate,
-software versions and the date. A row frame's payload is the frame as the bench sent it (`drivers.rows`).
-Losses precede the frame they were found before: {"rows", "frames", "overruns"}. Events and results are JSON.
-Samples are rows of a sampler of text lines that arrived together (`rig.record.samples`): JSON {"sampler": its name,
-"arrival_tick": the board tick estimated at arrival, "rows": [[numbers as they stood there], ...], "damaged": lines
-that were none, "ticks": [of the device, one a row], only if it sends any}; the header describes their columns.
-The end record closes a complete journal; one without it is an orphan, to be sealed by `haltere recover`.
-
-Reading stops at the first byte that is not as it must be: nothing after a damage is believed, so no wrong row
-ever comes out, and all before it does.
-"""
+"""The journal of a run: its writer, and its reader (`rig.record.records` has it byte by byte)."""
 
 from __future__ import annotations
 
 import contextlib
-import json
+import io
 import os
-import struct
-import zlib
 from collections.abc import Generator, Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -38,26 +14,34 @@ from drivers.rows import RowFrame
 from rig.events import Event
 from rig.record.durability import Disk, OsDisk, WriteBehind, free_bytes, lock, sync_folder
 from rig.record.errors import Damaged, JournalFailure, NameTaken
+from rig.record.records import (
+    CRC,
+    END,
+    EVENT,
+    FRAME,
+    HEAD,
+    HEADER,
+    LONGEST,
+    LOSSES,
+    MAGIC,
+    RESULT,
+    SAMPLES,
+    Record,
+    RecordStream,
+    encode,
+    magic_fault,
+    to_json,
+)  # fmt: skip
+from rig.record.resumption import resumption, torn_zeros
 from rig.record.samples import Samples
 
-MAGIC = b"HLTRJNL\x01"
-HEAD = struct.Struct("<BII")
-CRC = struct.Struct("<I")
-LONGEST = 64 * 2**20  # no record is longer; a length beyond is damage
+__all__ = [
+    "CRC", "END", "EVENT", "FRAME", "HEAD", "HEADER", "LONGEST", "LOSSES", "MAGIC", "READ_BYTES", "RESULT",
+    "SAMPLES", "Gap", "Journal", "JournalWriter", "Record", "RecordStream", "encode", "magic_fault", "to_json",
+]  # fmt: skip
+
 READ_BYTES = 1 << 20  # read at once
-
-HEADER, FRAME, EVENT, RESULT, LOSSES, END, SAMPLES = 1, 2, 3, 4, 5, 6, 7
 AT_ONCE = (EVENT, RESULT)  # rare, and somebody waits for them: written without waiting for more
-
-
-def encode(kind: int, sequence: int, payload: bytes) -> bytes:
-    """One record as it stands in the file."""
-    head = HEAD.pack(kind, len(payload), sequence)
-    return b"".join((head, payload, CRC.pack(zlib.crc32(payload, zlib.crc32(head)))))
-
-
-def to_json(fields: dict[str, Any]) -> bytes:
-    return json.dumps(fields, separators=(",", ":"), allow_nan=False, default=str).encode()
 
 
 class JournalWriter:
@@ -189,106 +173,48 @@ class JournalWriter:
 
 
 @dataclass(frozen=True)
-class Record:
-    """One intact record."""
+class Gap:
+    """Bytes of a journal that are no records: `start` up to `end`, and what shows it.
 
-    kind: int
-    sequence: int
-    payload: bytes
-    end: int  # offset of the byte after it
-
-    def fields(self) -> dict[str, Any]:
-        """The payload of a JSON record; ValueError if it is no JSON object."""
-        try:
-            found = json.loads(self.payload)
-        except RecursionError:
-            raise ValueError("nested too deep") from None
-        if not isinstance(found, dict):
-            raise ValueError("not a JSON object")
-        return found
-
-
-class RecordStream:
-    """Intact records out of bytes as they come, whatever pieces they come in; knows nothing of files.
-
-    The bytes are those after the magic. Nothing after a damage is believed: `damage` then says what and where,
-    and no record comes any more. `offset` is that of the first byte that is not yet part of an intact record.
+    `records` are missing in it by the numbers of those around it, None where no record stands behind it.
+    `harmless` is an end as a crash leaves it.
     """
 
-    def __init__(self) -> None:
-        self.offset = len(MAGIC)
-        self.ended = False
-        self.damage = ""
-        self._bytes = bytearray()
-        self._start = 0
-        self._sequence = 0
-
-    @property
-    def left(self) -> int:
-        """Bytes that came and are no whole record yet."""
-        return len(self._bytes) - self._start
-
-    def feed(self, data: bytes) -> None:
-        del self._bytes[: self._start]
-        self._start = 0
-        self._bytes += data
-
-    def take(self) -> Record | None:
-        """The next intact record; None if there is none (yet)."""
-        data, start = self._bytes, self._start
-        if self.damage or self.ended or self.left < HEAD.size:
-            return None
-        kind, length, sequence = HEAD.unpack_from(data, start)
-        if sequence != self._sequence or not HEADER <= kind <= SAMPLES or length > LONGEST:
-            self.damage = f"damaged record head at byte {self.offset}"
-            return None
-        size = HEAD.size + length + CRC.size
-        if self.left < size:
-            return None
-        body = start + HEAD.size
-        payload = bytes(data[body : body + length])
-        (crc,) = CRC.unpack_from(data, body + length)
-        if crc != zlib.crc32(payload, zlib.crc32(data[start:body])):
-            self.damage = f"damaged record at byte {self.offset}"
-            return None
-        self._start += size
-        self._sequence += 1
-        self.offset += size
-        self.ended = kind == END
-        return Record(kind, sequence, payload, self.offset)
-
-
-def magic_fault(start: bytes) -> str:
-    """What is wrong with the first bytes of a file, as the end of a sentence; "" if nothing is."""
-    if start[: len(MAGIC) - 1] != MAGIC[:-1]:
-        return "is not a Haltere journal"
-    if start[len(MAGIC) - 1 : len(MAGIC)] != MAGIC[-1:]:
-        return "is a journal of a format this version does not read"
-    return ""
+    start: int
+    end: int
+    what: str
+    records: int | None = None
+    harmless: bool = False
 
 
 class Journal:
-    """The intact part of a journal file, read piece by piece: a few MB of memory, whatever its length.
+    """The intact records of a journal file, read piece by piece: a few MB of memory, whatever its length.
 
-    Damaged if not even the header can be read; FileNotFoundError as usual. During iteration `good_bytes` counts
-    what was intact; after it `ended` tells whether the end record was there, `damage` where and why reading
-    stopped ("" if at the end). A disk that cannot be read any further is damage too.
+    Damaged if not even the header can be read; FileNotFoundError as usual. During iteration `good_bytes` tells
+    where the last intact record ended, `gaps` what could not be read before it; after it `ended` whether the end
+    record was there, `damage` what was wrong first ("" if nothing). A disk that cannot be read any further is
+    damage too, and nothing is looked for behind it.
     """
 
     def __init__(self, path: Path) -> None:
         self.path = path
         self.ended = False
-        self.damage = ""
+        self.gaps: list[Gap] = []
         self.good_bytes = 0
+        self.size = 0
         with path.open("rb") as file:
             try:
                 start = file.read(len(MAGIC))
             except OSError as error:
                 raise Damaged(f"{path} cannot be read: {error.strerror or error}") from error
+        if len(start) < len(MAGIC) and MAGIC.startswith(start):
+            raise Damaged(f"{path} is cut off after {len(start)} bytes: it holds nothing to recover")
         if fault := magic_fault(start):
             raise Damaged(f"{path} {fault}")
-        with contextlib.closing(self._records()) as records:
+        with contextlib.closing(self.records()) as records:
             first = next(records, None)
+        if first is None and all(gap.harmless for gap in self.gaps):
+            raise Damaged(f"{path} is cut off in its header, before any row: it holds nothing to recover")
         if first is None or first.kind != HEADER:
             raise Damaged(f"{path}: the journal's header is damaged, nothing can be recovered")
         try:
@@ -296,29 +222,66 @@ class Journal:
         except ValueError:
             raise Damaged(f"{path}: the journal's header is not readable, nothing can be recovered") from None
 
-    def __iter__(self) -> Iterator[Record]:
-        return self._records()
+    @property
+    def damage(self) -> str:
+        return self.gaps[0].what if self.gaps else ""
 
-    def _records(self) -> Generator[Record, None, None]:
+    def __iter__(self) -> Iterator[Record]:
+        return self.records()
+
+    def records(self) -> Generator[Record, None, None]:
+        """From the beginning, to be closed by whoever does not go to the end."""
         # Not mapped into memory: a bad sector under a mapping ends the process where a read gives an error.
-        stream = RecordStream()
-        self.ended, self.damage, self.good_bytes = False, "", stream.offset
+        self.ended, self.gaps, self.good_bytes = False, [], len(MAGIC)
+        stream: RecordStream | None = RecordStream()
         with self.path.open("rb", buffering=0) as file:
-            size = os.fstat(file.fileno()).st_size
-            file.seek(len(MAGIC))
-            data: bytes | None = b"more"
-            while data and not stream.damage and not stream.ended:
+            self.size = os.fstat(file.fileno()).st_size
+            while stream is not None:
+                file.seek(stream.offset)
+                data: bytes | None = b"more"
+                while data and not stream.damage and not stream.ended:
+                    try:
+                        data = file.read(READ_BYTES)
+                    except OSError as error:
+                        self._unreadable(stream.offset, error)
+                        return
+                    stream.feed(data or b"")
+                    while (record := stream.take()) is not None:
+                        self.good_bytes, self.ended = record.end, stream.ended
+                        yield record
+                place = stream.offset
                 try:
-                    data = file.read(READ_BYTES)
+                    stream = self._behind(file, stream)
                 except OSError as error:
-                    self.damage = f"not readable after byte {stream.offset}: {error.strerror or error}"
+                    self._unreadable(place, error)
                     return
-                stream.feed(data or b"")
-                while (record := stream.take()) is not None:
-                    self.good_bytes, self.ended = record.end, stream.ended
-                    yield record
-        self.damage = stream.damage
-        if stream.ended and size > stream.offset:
-            self.damage = f"{size - stream.offset} bytes follow the end record"
-        elif stream.left and not stream.damage:
-            self.damage = f"cut off in a record at byte {stream.offset}"
+
+    def _unreadable(self, place: int, error: OSError) -> None:
+        what = f"not readable after byte {place}: {error.strerror or error}"
+        self.gaps.append(Gap(place, self.size, what))
+
+    def _behind(self, file: io.FileIO, stream: RecordStream) -> RecordStream | None:
+        """Note what is wrong where a stream stopped, and go on behind it; None if there is no more."""
+        start, size = stream.offset, self.size
+        if stream.ended:
+            if size > start:
+                what = f"{size - start} bytes follow the end record"
+                self.gaps.append(Gap(start, size, what, harmless=True))
+            return None
+        if not stream.damage and not stream.left:
+            return None
+        found = resumption(file, start, stream.sequence, size)
+        if found is not None:
+            # Without a word of the stream it was a length that leads beyond the end of the file.
+            what = stream.damage or f"damaged record head at byte {start}"
+            self.gaps.append(Gap(start, found[0], what, found[1] - stream.sequence))
+            return RecordStream(*found)
+        zeros = torn_zeros(file, start, stream.sequence, size)
+        if zeros:
+            what = f"cut off at byte {start}, the last {zeros} bytes are zeros that a crash of the host left"
+            self.gaps.append(Gap(start, size, what, harmless=True))
+        elif stream.damage:
+            self.gaps.append(Gap(start, size, stream.damage))
+        else:
+            self.gaps.append(Gap(start, size, f"cut off in a record at byte {start}", harmless=True))
+        return None

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
@@ -11,70 +12,23 @@ import numpy as np
 from numpy.typing import NDArray
 
 from drivers.channels import Channel, ChannelTable
-from drivers.rows import FrameDamaged, FrameSequence, RowBlock, RowFrame
+from drivers.rows import FrameDamaged, RowFrame
 from rig.events import Event, unreadable
 from rig.record import journal as jn
 from rig.record.errors import Damaged
+from rig.record.pieces import Merger, Piece
+from rig.record.placement import Placement
+from rig.record.recovery import Recovery, Unread
 from rig.record.sampler_rows import SamplerRows
 from rig.record.samples import Samples
 
 #: Columns every stream has, so that no channel can be called so.
 COLUMNS = ("tick", "time_s", "status")
-#: Rows of a piece: an hour of rows as blocks of one frame each would take more memory than the rows.
-PIECE_ROWS = 1 << 16
-
-
-@dataclass(frozen=True)
-class Piece:
-    """Consecutive rows: tick uint64 (n,), raw int32 (n, channels), status uint16 (n,)."""
-
-    tick: NDArray[np.uint64]
-    raw: NDArray[np.int32]
-    status: NDArray[np.uint16]
-
-    def __len__(self) -> int:
-        return len(self.tick)
-
-
-class Merger:
-    """Joins blocks to pieces of PIECE_ROWS rows each, the last one shorter."""
-
-    def __init__(self) -> None:
-        self.pieces: list[Piece] = []
-        self._waiting: list[RowBlock] = []
-        self._rows = 0
-
-    def add(self, block: RowBlock) -> None:
-        self._waiting.append(block)
-        self._rows += len(block)
-        if self._rows >= PIECE_ROWS:
-            self._join()
-
-    def finish(self) -> list[Piece]:
-        """All pieces; nothing may be added after."""
-        if self._waiting:
-            self._join()
-        return self.pieces
-
-    def _join(self) -> None:
-        blocks, self._waiting = self._waiting, []
-        lengths = [len(block) for block in blocks]
-        status = np.repeat(np.array([block.status for block in blocks], dtype=np.uint16), lengths)
-        tick = np.concatenate([block.tick for block in blocks])
-        raw = np.concatenate([block.raw for block in blocks])
-        # Copies: a view would keep the longer array alive.
-        part = slice(0, PIECE_ROWS)
-        self.pieces.append(Piece(tick[part].copy(), raw[part].copy(), status[part].copy()))
-        self._rows = max(0, len(tick) - PIECE_ROWS)
-        if self._rows:
-            last = blocks[-1]  # only the last block can reach beyond, as pieces are joined once they are full
-            rest = slice(len(last) - self._rows, len(last))
-            self._waiting = [RowBlock(last.tick[rest].copy(), last.raw[rest].copy(), status=last.status)]
 
 
 @dataclass
 class Recording:
-    """What a journal holds, up to the first damage."""
+    """What of a journal is intact."""
 
     header: dict[str, Any]
     channels: ChannelTable
@@ -86,7 +40,21 @@ class Recording:
     final: dict[str, Any] | None = None
     samplers: dict[str, SamplerRows] = field(default_factory=dict)
     ended: bool = False
-    damage: str = ""
+    unread: list[Unread] = field(default_factory=list)
+    rows_behind: int = 0  # a damage
+    results_left_out: int = 0
+
+    @property
+    def damage(self) -> str:
+        """What is wrong first, "" if nothing is."""
+        return self.unread[0].what if self.unread else ""
+
+    @property
+    def recovery(self) -> Recovery | None:
+        """What a session sealed from this says of itself; None if the journal was whole."""
+        if self.ended and not self.unread:
+            return None
+        return Recovery(self.ended, tuple(self.unread), self.rows_behind, self.results_left_out)
 
     def __len__(self) -> int:
         """Rows."""
@@ -115,7 +83,7 @@ class Recording:
 
 
 def read_recording(path: Path) -> Recording:
-    """The intact part of a journal. Raises Damaged if its header is not readable."""
+    """All of a journal that is intact. Raises Damaged if its header is not readable."""
     book = jn.Journal(path)
     try:
         channels = ChannelTable(tuple(Channel(**fields) for fields in book.header["channels"]))
@@ -124,60 +92,159 @@ def read_recording(path: Path) -> Recording:
     if wrong := _wrong_header(book.header, channels):
         raise Damaged(f"{path}: the journal's header {wrong}")
     recording = Recording(book.header, channels)
-    sequence = FrameSequence()
-    merger = Merger()
-    overruns = 0
-    for record in book:
-        if record.kind == jn.FRAME:
+    _Reading(recording).go_through(book)
+    return recording
+
+
+class _Nonsense(ValueError):
+    """A record with a right check sum and a content no run writes, or one that does not continue what was before."""
+
+
+class _Reading:
+    """Goes through a journal once. What stands behind a damage waits until a row frame shows that it fits."""
+
+    def __init__(self, recording: Recording) -> None:
+        self._into = recording
+        self._placement = Placement()
+        self._merger = Merger()
+        self._overruns = 0
+        self._block_tick: int | None = None  # of the first row of the last block
+        self._waiting: list[jn.Gap | jn.Record] = []
+        self._rows_due = False  # a gap was taken, no rows have come behind it yet
+        self._untold: list[jn.Gap] = []  # taken, no row or event has come behind them yet
+        self._missing = False  # whether records are missing, so far
+        self._at = 0  # where the record stands that is being taken
+
+    def go_through(self, book: jn.Journal) -> None:
+        known = 0
+        # Closed here, not by the garbage collector: reading may end before the file does.
+        with contextlib.closing(book.records()) as records:
             try:
-                block = sequence.place(RowFrame.unpack(record.payload))
-            except FrameDamaged as error:
-                recording.damage = f"{error} (record {record.sequence})"
+                for record in records:
+                    self._waiting += book.gaps[known:]
+                    known = len(book.gaps)
+                    if not self._waiting:
+                        self._take(record)
+                        continue
+                    self._waiting.append(record)
+                    if record.kind == jn.FRAME:
+                        self._settle(record)
+                self._settle()
+            except _Nonsense as error:
+                self._end(f"{error} at byte {self._at}", book.size)
+            else:
+                self._into.ended = book.ended
+                for gap in book.gaps[known:]:
+                    unread = Unread(gap.what, gap.start, gap.end, gap.harmless, from_tick=self._block_tick)
+                    self._into.unread.append(unread)
+        self._into.pieces = self._merger.finish()
+
+    def _end(self, what: str, size: int) -> None:
+        """Nothing is taken from here on, nor what waited."""
+        place = self._at
+        for one in self._waiting:
+            if isinstance(one, jn.Gap):
+                what, place = f"{one.what}, and {what}", one.start
                 break
-            if block.raw.shape[1] != len(channels):
-                recording.damage = (
-                    f"a row frame with {block.raw.shape[1]} channels (record {record.sequence})"
-                )
-                break
-            new_overruns = (block.overruns - overruns) & 0xFFFF if recording.frames else 0
-            overruns = block.overruns
-            if block.lost_rows or block.lost_frames or new_overruns:
-                loss = (int(block.tick[0]), block.lost_rows, block.lost_frames, new_overruns)
-                recording.losses.append(loss)
-            recording.frames += 1
-            merger.add(block)
+        self._into.unread.append(Unread(what, place, size, from_tick=self._block_tick))
+
+    def _settle(self, frame: jn.Record | None = None) -> None:
+        """Take what waited, if the row frame at its end (if there is one) continues the rows before."""
+        if frame is not None:
+            self._at = frame.start
+            if not self._placement.fits(_row_frame(frame)):
+                raise _Nonsense("rows that do not continue those before it")
+        waiting, self._waiting = self._waiting, []
+        for one in waiting:
+            if isinstance(one, jn.Record):
+                self._take(one)
+                continue
+            unread = Unread(one.what, one.start, one.end, records=one.records, from_tick=self._block_tick)
+            self._into.unread.append(unread)
+            self._rows_due = True
+            if one.records:
+                self._untold.append(one)
+                self._missing = True
+
+    def _take(self, record: jn.Record) -> None:
+        into = self._into
+        self._at = record.start
+        if record.kind == jn.FRAME:
+            self._take_frame(_row_frame(record))
         elif record.kind == jn.EVENT:
             try:
                 event = Event.from_json(record.fields())
                 if not 0 <= event.tick < 2**64 or unreadable(event):
                     raise ValueError("no tick, or no session could be opened with it")
-                recording.events.append(event)
             except (ValueError, KeyError, TypeError, OverflowError):
-                recording.damage = f"an event that is none (record {record.sequence})"
-                break
+                raise _Nonsense("an event that is none, in the record") from None
+            self._tell_gaps(event.tick, self._placement.last_tick)
+            into.events.append(event)
         elif record.kind == jn.SAMPLES:
             try:
                 samples = Samples.from_json(record.fields())
                 if not samples.sampler.isidentifier():
                     raise ValueError("no name of a sampler")
-                recording.samplers.setdefault(samples.sampler, SamplerRows()).add(samples)
+                into.samplers.setdefault(samples.sampler, SamplerRows()).add(samples)
             except ValueError:
-                recording.damage = f"rows of a sampler that are none (record {record.sequence})"
-                break
+                raise _Nonsense("rows of a sampler that are none, in the record") from None
         elif record.kind == jn.RESULT:
             try:
                 fields = record.fields()
             except ValueError:
-                recording.damage = f"a result that is none (record {record.sequence})"
-                break
-            if fields.pop("which", "live") == "final":
-                recording.final = fields
+                raise _Nonsense("a result that is none, in the record") from None
+            if self._missing:
+                # Worked out from what is missing now: nobody could come to the same again.
+                into.results_left_out += 1
+            elif fields.pop("which", "live") == "final":
+                into.final = fields
             else:
-                recording.live.append(fields)
-    recording.pieces = merger.finish()
-    recording.ended = book.ended
-    recording.damage = recording.damage or book.damage
-    return recording
+                into.live.append(fields)
+
+    def _take_frame(self, frame: RowFrame) -> None:
+        into = self._into
+        if frame.raw.shape[1] != len(into.channels):
+            raise _Nonsense(f"a row frame with {frame.raw.shape[1]} channels, in the record")
+        near_tick = into.events[-1].tick if into.events else None
+        before = self._placement.last_tick
+        try:
+            block = self._placement.place(frame, self._rows_due, near_tick)
+        except FrameDamaged as error:
+            raise _Nonsense(f"{error}, in the record") from None
+        first = int(block.tick[0])
+        new_overruns = (block.overruns - self._overruns) & 0xFFFF if into.frames else 0
+        self._overruns = block.overruns
+        if block.lost_rows or block.lost_frames or new_overruns:
+            into.losses.append((first, block.lost_rows, block.lost_frames, new_overruns))
+        if self._rows_due:
+            # Of several gaps without a row between them the last one tells the rows of all.
+            told = replace(into.unread[-1], rows=block.lost_rows, frames=block.lost_frames, to_tick=first)
+            into.unread[-1] = told
+            self._rows_due = False
+        if into.unread:
+            into.rows_behind += len(block)
+        self._tell_gaps(first, before)
+        self._block_tick = first
+        into.frames += 1
+        self._merger.add(block)
+
+    def _tell_gaps(self, next_tick: int, last_tick: int | None) -> None:
+        """An event for each gap: what is behind it may belong to something else than what is before it."""
+        events = self._into.events
+        ticks = [event.tick for event in events[-1:]]
+        if last_tick is not None:
+            ticks.append(last_tick)
+        for gap in self._untold:
+            told = {"records": gap.records, "text": gap.what}
+            events.append(Event(max(ticks, default=next_tick), "unread", told))
+        self._untold = []
+
+
+def _row_frame(record: jn.Record) -> RowFrame:
+    try:
+        return RowFrame.unpack(record.payload)
+    except FrameDamaged as error:
+        raise _Nonsense(f"{error}, in the record") from None
 
 
 def _wrong_header(header: dict[str, Any], channels: ChannelTable) -> str:

@@ -17,6 +17,8 @@
                            software: what worked it out
     /rig, /protocol, /header      texts as they were when the run began
     /calibrations/NAME            texts
+    /recovered                    JSON text, only where the journal was not whole: what is missing, and why
+                           (`rig.record.recovery`)
     /digests               JSON text, SHA-256 of each dataset and of all attributes (`rig.record.digests`)
 
 It is written under another name in the same folder, synced, read back and compared, and then given its name:
@@ -28,6 +30,7 @@ found, where the older layout would hand it out as it is.
 
 from __future__ import annotations
 
+import contextlib
 import json
 import os
 from pathlib import Path
@@ -36,10 +39,11 @@ import h5py
 import numpy as np
 
 from rig.events import Event
-from rig.record import digests, overview, sampler_rows
+from rig.record import digests, overview, recovery, sampler_rows
 from rig.record.durability import lock, sync_folder
 from rig.record.errors import JournalFailure, NameTaken
 from rig.record.recording import Recording, read_recording
+from rig.record.refusals import refusal
 
 FORMAT = 1
 #: What of a channel stands beside its column.
@@ -86,10 +90,10 @@ def write_session(recording: Recording, session: Path) -> None:
     except FileExistsError:
         raise NameTaken(f"{session} is there already") from None
     except (OSError, RuntimeError, ValueError) as error:  # h5py tells a full disk as one of the first two
-        words = error.strerror if isinstance(error, OSError) and error.strerror else str(error).split("(")[0]
-        raise JournalFailure(f"{session} cannot be written: {words.strip()}") from error
+        raise JournalFailure(f"{session} cannot be written: {refusal(error, session)}") from error
     finally:
-        aside.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):  # of a folder that is none
+            aside.unlink(missing_ok=True)
 
 
 def _name(aside: Path, session: Path) -> None:
@@ -130,6 +134,8 @@ def _fill(file: h5py.File, recording: Recording) -> digests.DigestingFile:
     for name in ("rig", "protocol"):
         book.text(f"/{name}", str(header.get(f"{name}_text", "")))
     book.text("/header", json.dumps(header, default=str))
+    if recording.recovery is not None:
+        book.text(recovery.PLACE, json.dumps(recording.recovery.to_json()))
     file.create_group("calibrations")
     for name, text in dict(header.get("calibrations", {})).items():
         book.text(f"/calibrations/{name}", str(text))

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import functools
 import itertools
-import math
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 from typing import Any
@@ -17,6 +16,7 @@ from drivers.channels import Channel, ChannelTable
 from drivers.rows import RowBlock
 from rig.record import overview
 from rig.record.errors import Damaged
+from rig.record.parts import number_attribute, text_attribute, whole_attribute
 from rig.record.rowclock import RowClock
 
 #: Rows read at a time where a column is gone through: whole chunks of the file.
@@ -31,16 +31,23 @@ class Stream:
         self._path = path
         self.losses = tuple(losses)  # tick of the row after, rows, frames, overruns
         self._cache: dict[str, NDArray[Any]] = {}
-        self.tick_hz = int(group.attrs["tick_hz"])
-        self.row_period_ticks = int(group.attrs["row_period_ticks"])
-        self.frame_rows = int(group.attrs["frame_rows"])
+        self.tick_hz = whole_attribute(group, "tick_hz", path)
+        self.row_period_ticks = whole_attribute(group, "row_period_ticks", path)
+        self.frame_rows = whole_attribute(group, "frame_rows", path)
+        for name in ("tick", "time_s", "status"):
+            if name not in group:
+                raise Damaged(f"{path} is damaged: {group.name}/{name} is missing")
         if self.tick_hz < 1:
             raise Damaged(f"{path}: stream {group.name} counts {self.tick_hz} ticks a second")
-        named = [(int(data.attrs["column"]), name) for name, data in group.items() if "column" in data.attrs]
+        named = [
+            (whole_attribute(data, "column", path), name)
+            for name, data in group.items()
+            if "column" in data.attrs
+        ]
         if sorted(column for column, _ in named) != list(range(len(named))):
             raise Damaged(f"{path}: stream {group.name} has columns of one number or none")
         names = [name for _, name in sorted(named)]
-        self.channels = ChannelTable(tuple(_channel(name, group[name]) for name in names))
+        self.channels = ChannelTable(tuple(_channel(name, group[name], path) for name in names))
         length = len(group["tick"])
         for name in ("time_s", "status", *names):
             if len(group[name]) != length:
@@ -244,8 +251,12 @@ class SamplerStream:
         self._group = group
         self._path = path
         self.limits = str(group.attrs.get("limits", ""))
-        self.damaged_lines = int(group.attrs.get("damaged_lines", 0))
+        self.damaged_lines = whole_attribute(group, "damaged_lines", path)
         self.columns = tuple(name for name, data in group.items() if "scale" in data.attrs)
+        for name in self.columns:
+            text_attribute(group[name], "unit", path)
+            number_attribute(group[name], "scale", path)
+            number_attribute(group[name], "offset", path)
 
     @property
     def time_s(self) -> NDArray[np.float64]:
@@ -272,22 +283,15 @@ def _part(data: h5py.Dataset, first: int, end: int, path: Path) -> NDArray[Any]:
         raise Damaged(f"{path}: {data.name} cannot be read, its data are damaged") from None
 
 
-def _channel(name: str, data: h5py.Dataset) -> Channel:
-    attributes = data.attrs
-    for wanted in ("measures", "unit", "scale", "offset", "delay_s", "low_raw", "high_raw", "calibration"):
-        if wanted not in attributes:
-            raise ValueError(f"{name} has no {wanted}")
-    for number in ("scale", "offset", "delay_s"):
-        if not math.isfinite(attributes[number]):
-            raise ValueError(f"{number} of {name} is {attributes[number]}")
+def _channel(name: str, data: h5py.Dataset, path: Path) -> Channel:
     return Channel(
         name=name,
-        measures=str(attributes["measures"]),
-        unit=str(attributes["unit"]),
-        scale=float(attributes["scale"]),
-        offset=float(attributes["offset"]),
-        delay_s=float(attributes["delay_s"]),
-        low_raw=int(attributes["low_raw"]),
-        high_raw=int(attributes["high_raw"]),
-        calibration=str(attributes["calibration"]),
+        measures=text_attribute(data, "measures", path),
+        unit=text_attribute(data, "unit", path),
+        scale=number_attribute(data, "scale", path),
+        offset=number_attribute(data, "offset", path),
+        delay_s=number_attribute(data, "delay_s", path),
+        low_raw=whole_attribute(data, "low_raw", path),
+        high_raw=whole_attribute(data, "high_raw", path),
+        calibration=text_attribute(data, "calibration", path),
     )

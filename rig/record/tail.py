@@ -7,7 +7,8 @@ from pathlib import Path
 from types import TracebackType
 
 from rig.record.errors import Damaged
-from rig.record.journal import HEADER, MAGIC, READ_BYTES, Record, RecordStream, magic_fault
+from rig.record.journal import READ_BYTES
+from rig.record.records import HEADER, MAGIC, Record, RecordStream, magic_fault
 
 #: One poll stops once it has read so much and found a record, so that a late follower does not hold a whole run.
 POLL_BYTES = 16 * READ_BYTES

@@ -70,11 +70,15 @@ def test_every_length_gives_an_intact_prefix(tmp_path: Path) -> None:
     assert before == 4 * ROWS
 
 
-def test_every_flipped_byte_gives_no_wrong_row(tmp_path: Path) -> None:
+def test_every_flipped_byte_costs_its_record_and_no_other(tmp_path: Path) -> None:
+    """No wrong row, and all rows before and behind the damage."""
     path = tmp_path / "a.journal"
     write(path, 3)
     data = path.read_bytes()
-    header_end = next(iter(Journal(path))).end
+    records = list(Journal(path))
+    header_end = records[0].end
+    whole = np.concatenate([frame(k).raw for k in range(3)])
+    ticks = np.concatenate([frame(0).tick + (5 * k + np.arange(5)) * 1000 for k in range(3)])
     # The texts in the header are long and all alike: every 97th of their bytes will do.
     places = [*range(40), *range(40, header_end - 10, 97), *range(header_end - 10, len(data))]
     for place in places:
@@ -89,13 +93,21 @@ def test_every_flipped_byte_gives_no_wrong_row(tmp_path: Path) -> None:
                 assert str(path) in str(error) and "\n" not in str(error)
                 continue
             assert place >= header_end
-            assert good(found.raw, 3)
-            # The event before each frame comes out with it, whole or not at all.
-            assert [event.data["text"] for event in found.events] == [
-                f"frame {k}" for k in range(len(found.events))
-            ]
-            assert len(found.events) - found.frames in (0, 1)
-            assert found.damage and not found.ended
+            hit = next(index for index, record in enumerate(records) if place < record.end)
+            frames = [k for k in range(3) if hit != 2 + 2 * k]
+            rows = np.concatenate([np.arange(5 * k, 5 * k + 5) for k in frames])
+            np.testing.assert_array_equal(found.raw, whole[rows])
+            np.testing.assert_array_equal(found.tick, ticks[rows])
+            marks = [event.data["text"] for event in found.events if event.kind == "mark"]
+            assert marks == [f"frame {k}" for k in range(3) if hit != 1 + 2 * k]
+            unread = [index for index, event in enumerate(found.events) if event.kind == "unread"]
+            last = hit == len(records) - 1
+            assert found.damage and found.ended != last and found.recovery is not None
+            # Told where an event or a row follows: behind the last frame there is none.
+            assert len(unread) == (hit < len(records) - 3)
+            lost = [loss[1:3] for loss in found.losses]
+            assert lost == ([(ROWS, 1)] if hit in (4,) else [])
+            assert (found.final is None) == (hit < len(records) - 1)
 
 
 def test_ticks_are_unwrapped_and_losses_counted(tmp_path: Path) -> None:

@@ -9,7 +9,7 @@ import pytest
 from small_journal import header
 
 from drivers.rows import RowFrame
-from rig.record import recording
+from rig.record import pieces
 from rig.record.journal import JournalWriter
 from rig.record.recording import read_recording
 from rig.record.sealing import seal
@@ -39,7 +39,7 @@ def test_pieces_hold_what_the_frames_held(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, piece_rows: int
 ) -> None:
     """A frame has 255 rows at most, and many of them do not fit into a piece without a rest."""
-    monkeypatch.setattr(recording, "PIECE_ROWS", piece_rows)
+    monkeypatch.setattr(pieces, "PIECE_ROWS", piece_rows)
     random = np.random.default_rng(1)
     sizes = [int(n) for n in random.integers(1, 256, 59)]
     tick, raw, status = long_journal(tmp_path / "a.journal", sizes)
