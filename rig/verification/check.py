@@ -19,6 +19,8 @@ class Check:
     outcome: str
     sentence: str
     problems: tuple[str, ...] = ()
+    #: Whether it is a check that a sound session allows: left undone it says nothing good.
+    due: bool = True
 
     def to_json(self) -> dict[str, Any]:
         return {
@@ -39,8 +41,9 @@ def found(name: str, problems: Sequence[str], good: str) -> Check:
     return Check(name, WRONG, told, tuple(problems))
 
 
-def skipped(name: str, why: str) -> Check:
-    return Check(name, NOT_CHECKED, why)
+def skipped(name: str, why: str, *, due: bool = True) -> Check:
+    """A check that was not done; not `due` if a sound session gives no occasion for it either."""
+    return Check(name, NOT_CHECKED, why, due=due)
 
 
 def counted(number: int, noun: str) -> str:

@@ -36,15 +36,30 @@ def event_problems(events: Sequence[Event], span: tuple[int, int] | None, tick_h
 
 def bracket_problems(events: Sequence[Event]) -> list[str]:
     """Levels, taps and quiet records that begin or end alone. A halt ends whatever is open, without an event."""
+    return _brackets(events)[0]
+
+
+def open_at_end(events: Sequence[Event]) -> list[str]:
+    """What has begun and neither ended nor was halted when the events end: "the event 'tap 3' at tick 5000"."""
+    return _brackets(events)[1]
+
+
+def _brackets(events: Sequence[Event]) -> tuple[list[str], list[str]]:
     problems = []
     level: Event | None = None
     inside: Event | None = None  # the tap, release or quiet record that is open
+    # Behind records that could not be read a level may go on that began there, and an interval may end.
+    level_unknown = inside_unknown = False
     for event in events:
         kind = event.kind
-        if kind in ("trip", "halt", "finished"):
+        if kind == "unread":
+            level = inside = None
+            level_unknown = inside_unknown = True
+        elif kind in ("trip", "halt", "finished"):
             if kind == "halt" and event.data.get("cause") == "end of the protocol":
                 problems += [f"{_named(one)} has no end" for one in (inside, level) if one is not None]
             level = inside = None
+            level_unknown = inside_unknown = False
         elif kind in ("level", "level_end"):
             if inside is not None:
                 problems.append(f"{_named(inside)} has no end")
@@ -54,27 +69,43 @@ def bracket_problems(events: Sequence[Event]) -> list[str]:
                     problems.append(f"{_named(level)} has no end")
                 level = event
             else:
-                if level is None or level.data.get("level") != event.data.get("level"):
+                fits = level is not None and level.data.get("level") == event.data.get("level")
+                if not fits and not level_unknown:
                     problems.append(f"{_named(event)} has no beginning")
                 level = None
+            level_unknown = inside_unknown = False
         elif kind in BEGINS:
             if inside is not None:
                 problems.append(f"{_named(inside)} has no end")
-            inside = event
+            inside, inside_unknown = event, False
         elif kind in ENDS:
-            numbers = [None if one is None else one.data.get("tap") for one in (inside, event)]
-            if inside is None or inside.kind != ENDS[kind] or numbers[0] != numbers[1]:
+            fits = (
+                inside is not None
+                and inside.kind == ENDS[kind]
+                and inside.data.get("tap") == event.data.get("tap")
+            )
+            if not fits and not inside_unknown:
                 problems.append(f"{_named(event)} has no beginning")
-            inside = None
-        elif kind == "settled" and level is None:
+            inside, inside_unknown = None, False
+        elif kind == "settled" and level is None and not level_unknown:
             problems.append(f"{_named(event)} belongs to no level")
-    return problems
+    return problems, [_named(one) for one in (inside, level) if one is not None]
 
 
 def loss_event_problems(
-    events: Sequence[Event], losses: Sequence[tuple[int, ...]], last_tick: int
+    events: Sequence[Event],
+    losses: Sequence[tuple[int, ...]],
+    last_tick: int,
+    unread: Sequence[tuple[int, int | None]] = (),
 ) -> list[str]:
-    """What a run told as lost while it was on must be what its frames show."""
+    """What a run told as lost while it was on must be what its frames show.
+
+    Not so where the journal could not be read: `unread` are first and last tick (None: to the end) of such stretches.
+    """
+
+    def known(tick: int) -> bool:
+        return not any(first <= tick and (last is None or tick <= last) for first, last in unread)
+
     told = {event.tick: event.data for event in events if event.kind == "loss"}
     counted = {tick: dict(zip(("rows", "frames", "overruns"), rest, strict=True)) for tick, *rest in losses}
     problems = [
@@ -82,13 +113,13 @@ def loss_event_problems(
         if tick in told
         else f"the loss before tick {tick} was not told by the run"
         for tick, counts in counted.items()
-        if told.get(tick) != counts
+        if told.get(tick) != counts and known(tick)
     ]
     # Of a recording that was cut off, the last frame may be missing though its loss was told.
     problems += [
         f"the run told a loss before tick {tick}, the frames show none"
         for tick in told
-        if tick not in counted and tick <= last_tick
+        if tick not in counted and tick <= last_tick and known(tick)
     ]
     return problems
 

@@ -18,10 +18,11 @@ from rig.problem import FileProblems
 from rig.record import overview
 from rig.record.digests import problems as digest_problems
 from rig.record.errors import Damaged
+from rig.record.recovery import Recovery
 from rig.session import Session, Stream, open_session
 from rig.verdicts import verdict_to_json
-from rig.verification.check import WRONG, Check, counted, found, skipped
-from rig.verification.course import event_problems, loss_event_problems
+from rig.verification.check import NOT_CHECKED, WRONG, Check, counted, found, skipped
+from rig.verification.course import MARGIN_S, event_problems, loss_event_problems, open_at_end
 from rig.verification.rows import RowsFound, clock_problems, go_through, loss_problems
 
 NAMES = ("structure", "digests", "clock", "rows", "events", "texts", "overview", "results")
@@ -51,12 +52,9 @@ def verify(path: Path, software: str, rig_of: Callable[[Session], RigDescription
 
 def _structure(session: Session) -> str:
     board = session.streams["board"]
-    return ", ".join(
-        (
-            f"{counted(len(board), 'row')} of {counted(len(board.channels), 'channel')}",
-            counted(len(session.events), "event"),
-        )
-    )
+    told = f"{counted(len(board), 'row')} of {counted(len(board.channels), 'channel')}, "
+    told += counted(len(session.events), "event")
+    return f"{told}; {session.recovered.sentence}" if session.recovered is not None else told
 
 
 def _digests(path: Path) -> Check:
@@ -65,7 +63,7 @@ def _digests(path: Path) -> Check:
     except Damaged:
         return skipped("digests", "the file cannot be looked through")
     if problems is None:
-        return skipped("digests", "the session has none, it was sealed before there were any")
+        return found("digests", ["the session has none, and every session is sealed with them"], "")
     return found("digests", problems, "everything is as it was when it was sealed, or amended since")
 
 
@@ -88,7 +86,8 @@ def _rows(board: Stream, rows: RowsFound | Damaged) -> Check:
     if isinstance(rows, Damaged):
         return skipped("rows", "the ticks cannot be read")
     if rows.backward or rows.uneven or not board.row_period_ticks:
-        return skipped("rows", "they can be counted by ticks in whole row periods only")
+        why = "they can be counted by ticks in whole row periods only"
+        return skipped("rows", why, due=bool(board.row_period_ticks))
     problems = loss_problems(rows, board.losses, board.first_tick, board.last_tick, board.row_period_ticks)
     lost = sum(loss[1] for loss in board.losses)
     good = f"{counted(rows.rows, 'row')} without a gap"
@@ -106,11 +105,29 @@ def _events(session: Session) -> Check:
     except Damaged:
         span = None
     problems = event_problems(events, span, board.tick_hz)
-    if any(event.kind == "run" for event in events):  # journalled by a run, not by a script
-        problems += loss_event_problems(events, session.losses, span[1] if span else 0)
-    return found(
-        "events", problems, f"{len(events)} in order, each begin with its end or cut short by a halt"
-    )
+    recovered = session.recovered
+    cut_off = recovered is not None and not recovered.ended
+    still_open = open_at_end(events)
+    if not cut_off:
+        problems += [f"{one} has no end" for one in still_open]
+    if any(event.kind in ("run", "unread") for event in events):  # journalled by a run, not by a script
+        problems += loss_event_problems(
+            events, session.losses, span[1] if span else 0, _unread_ticks(recovered, board.tick_hz)
+        )
+    good = f"{len(events)} in order, each begin with its end or cut short by a halt"
+    if recovered is not None and recovered.with_gap:
+        good += ", as far as the journal could be read"
+    if cut_off and still_open:
+        good += f", but for {' and '.join(still_open)}, in which the journal ends"
+    return found("events", problems, good)
+
+
+def _unread_ticks(recovered: Recovery | None, tick_hz: int) -> list[tuple[int, int | None]]:
+    """Stretches of time in which losses may be there that the run's events do not tell, or the other way round."""
+    if recovered is None:
+        return []
+    stretches = [(one.from_tick or 0, one.to_tick) for one in recovered.unread]
+    return [(max(0, first - int(MARGIN_S * tick_hz)), last) for first, last in stretches]
 
 
 def _texts(session: Session, software: str) -> Check:
@@ -122,7 +139,8 @@ def _texts(session: Session, software: str) -> Check:
             unread += [str(problem) for problem in error.problems]
     problems = _header_problems(session.header, session.streams["board"])
     if unread and session.software != software and not problems:
-        return skipped("texts", f"written by {session.software}, {software} does not read them: {unread[0]}")
+        why = f"written by {session.software}, {software} does not read them: {unread[0]}"
+        return skipped("texts", why, due=False)
     return found(
         "texts", unread + problems, "rig and protocol can be read, the header agrees with the columns"
     )
@@ -146,7 +164,7 @@ def _header_problems(header: dict[str, Any], board: Stream) -> list[str]:
 def _overview(board: Stream) -> Check:
     wanted = overview.levels(len(board))
     problems: list[str] = []
-    levels = 0
+    checked = 0
     for channel in board.channels:
         try:
             stored = board.stored_levels(channel.name)
@@ -154,14 +172,15 @@ def _overview(board: Stream) -> Check:
         except (Damaged, ValueError, TypeError, AttributeError) as error:
             problems.append(f"that of {channel.name} cannot be compared ({error})")
             continue
-        levels += len(stored)
+        checked += bool(stored)
         if sorted(stored) != wanted:
-            problems.append(f"that of {channel.name} has levels of {sorted(stored)} rows, expected {wanted}")
+            problems.append(f"that of {channel.name} has bins of {sorted(stored)} rows, expected {wanted}")
         elif not all(_equal(stored[size], made[size]) for size in stored):
             problems.append(f"that of {channel.name} does not follow from its rows")
-    if wanted and not levels and len(problems) == len(board.channels):
-        return skipped("overview", "the session has none, it was sealed before there were any")
-    return found("overview", problems, f"{counted(levels, 'level')}, each the least and greatest of its rows")
+    if wanted and not checked and len(problems) == len(board.channels):
+        problems = ["the session has none, and every session of so many rows is sealed with one"]
+    good = f"of {counted(checked, 'channel')}, each bin the least and greatest of its rows"
+    return found("overview", problems, good if wanted else "none, the rows are too few to need one")
 
 
 def _equal(one: NDArray[np.int32], other: NDArray[np.int32]) -> bool:
@@ -171,10 +190,10 @@ def _equal(one: NDArray[np.int32], other: NDArray[np.int32]) -> bool:
 def _results(session: Session, software: str, rig_of: Callable[[Session], RigDescription]) -> Check:
     live, final = told_verdicts(session.results["live"]), session.results["final"]
     if live is None and final is None:
-        return skipped("results", "the session holds neither verdicts nor results")
+        return skipped("results", "the session holds neither verdicts nor results", due=False)
     others = sorted({session.software, session.results_software} - {software})
     if others:
-        return skipped("results", f"worked out by {' and '.join(others)}, this is {software}")
+        return skipped("results", f"worked out by {' and '.join(others)}, this is {software}", due=False)
     try:
         again = Replay(rig_of(session), session.streams["board"], session.events)
         for _ in again.steps():
@@ -197,5 +216,5 @@ def _results(session: Session, software: str, rig_of: Callable[[Session], RigDes
 
 
 def sound(checks: list[Check]) -> bool:
-    """Whether nothing is wrong, as far as it could be checked."""
-    return not any(check.outcome == WRONG for check in checks)
+    """Whether nothing is wrong, and no check is missing that a sound session would have allowed."""
+    return not any(check.outcome == WRONG or (check.outcome == NOT_CHECKED and check.due) for check in checks)
