@@ -6,6 +6,7 @@ import argparse
 import json
 
 from rig.command.exits import Exit
+from rig.command.seal_check import seal_state
 from rig.command.sessions import analyse_session, opened, session_rig
 from rig.command.table import summary
 from rig.files.rig import read_rig
@@ -17,6 +18,7 @@ def main(words: argparse.Namespace) -> Exit:
     told = []
     for path in words.sessions:
         with opened(path) as session:
+            seal_state(session).tell(session)
             result = analyse_session(session, other or session_rig(session))
         if words.json:
             told.append(result.to_json())

@@ -13,6 +13,7 @@ from pathlib import Path
 from drivers.clock import Clock, HostClock
 from rig.command.exits import CommandError, Exit
 from rig.command.progress import RunProgress
+from rig.command.seal_check import SealState
 from rig.command.sessions import opened, session_rig, software
 from rig.command.table import summary
 from rig.evaluation.comparison import WITHIN, first_difference, told_verdicts, verdict_difference
@@ -34,6 +35,8 @@ def main(words: argparse.Namespace) -> Exit:
     if speed is not None and not SLOWEST <= speed < math.inf:
         raise CommandError(f"--speed {speed:g}: expected a number of times real time, {SLOWEST} or more")
     with opened(words.session) as session:
+        if session.recovered is not None:
+            SealState(recovered=session.recovered.sentence).tell(session)
         board = session.streams["board"]
         with RunProgress(board.duration_s, quiet=words.quiet) as progress:
             verdicts, result = replayed(session, progress, speed, HostClock())
@@ -52,7 +55,9 @@ def _in_the_window(words: argparse.Namespace) -> Exit:
         raise CommandError(
             "--desk: speed is chosen in the window, and there is no JSON; expected SESSION alone"
         )
-    opened(words.session).close()
+    with opened(words.session) as session:
+        if session.recovered is not None:
+            SealState(recovered=session.recovered.sentence).tell(session)
     from rig.command.desk import show
 
     return show(Path(words.session))

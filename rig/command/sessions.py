@@ -14,6 +14,7 @@ from drivers.errors import BenchError
 from drivers.rows import RowBlock
 from rig.command.exits import CommandError, Exit
 from rig.command.moment import utc_text
+from rig.command.seal_check import SealState
 from rig.description import RigDescription
 from rig.evaluation.analyst import Analyst
 from rig.events import Event
@@ -162,8 +163,10 @@ def analyse_session(session: Session, rig: RigDescription) -> SessionResult:
     return analyst.finish()
 
 
-def report_session(session: Session, rig: RigDescription, result: SessionResult, out: Path) -> None:
-    """Write the report of a session."""
+def report_session(
+    session: Session, rig: RigDescription, result: SessionResult, out: Path, state: SealState | None = None
+) -> None:
+    """Write the report of a session; `state` is how it compares with its digests, None for one just sealed."""
     from rig.report import Provenance, averaged_curve, fitted_curve, write_report
 
     digest = hashlib.sha256(session.path.read_bytes()).hexdigest()
@@ -176,6 +179,8 @@ def report_session(session: Session, rig: RigDescription, result: SessionResult,
         pace=str(session.header.get("pace", "")),
         firmware=str(session.header.get("bench", {}).get("firmware", "")),
         software={"haltere": software(), **_libraries()},
+        changed=state.changed if state is not None else "",
+        recovered=session.recovered.sentence if session.recovered is not None else "",
     )
     write_report(
         out,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
@@ -10,6 +11,7 @@ import numpy as np
 
 from rig.description import RigDescription
 from rig.events import Event
+from rig.record.refusals import refusal
 from rig.report import apparatus, doubts, methods, protection, summary, tables
 from rig.report.course import course_figure
 from rig.report.curves import MapCurve, fitted_curve
@@ -46,7 +48,8 @@ def write_report(
 
     streams: the board's stream (time_s in s, channels in SI units by the rig's names). theory, fit: curves
     for the stability map, else the averaged body and what the result holds. fit_tap: how
-    a tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError.
+    a tap's curve is fitted for its picture. The file appears whole or not at all. Raises OSError, its file the
+    target.
     """
     page = render(
         rig=rig, protocol=protocol, result=result, streams=streams, events=events,
@@ -54,8 +57,14 @@ def write_report(
     )  # fmt: skip
     target = Path(path)
     part = target.with_name(target.name + ".part")
-    part.write_text(page, encoding="utf-8")
-    part.replace(target)
+    try:
+        part.write_text(page, encoding="utf-8")
+        part.replace(target)
+    except OSError as error:
+        # Whoever asked knows the target only, and has no use for half a page beside it.
+        with contextlib.suppress(OSError):
+            part.unlink(missing_ok=True)
+        raise OSError(error.errno, refusal(error, target), str(target)) from error
 
 
 def render(

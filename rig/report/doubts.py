@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from analysis.counting import counted
 from rig.description import RigDescription
 from rig.report.rounding import bare
 from rig.report.wording import sentence
@@ -39,12 +40,14 @@ def limits_and_doubts(rig: RigDescription, result: SessionResult) -> list[str]:
     doubts += [sentence(remark) for remark in result.remarks]
     excluded = sum(not tap.accepted for tap in result.taps)
     if excluded:
-        share = f"{excluded} of {len(result.taps)} taps were left out; each is listed with its reason."
+        were = "was" if excluded == 1 else "were"
+        share = f"{excluded} of {counted(len(result.taps), 'tap')} {were} left out; each is listed with its reason."
         doubts.append(share)
     undetermined = sum(level.regime == "undetermined" for level in result.levels)
     if undetermined:
         doubts.append(
-            f"{undetermined} of {len(result.levels)} levels stay undetermined; their reasons stand in the "
+            f"{undetermined} of {counted(len(result.levels), 'level')} "
+            f"{'stays' if undetermined == 1 else 'stay'} undetermined; the reasons stand in the "
             "table."
         )
     for name, finding in (("vibrational", result.vibration), ("passive", result.passivity)):
@@ -59,8 +62,8 @@ def limits_and_doubts(rig: RigDescription, result: SessionResult) -> list[str]:
         doubts.append(f"Theory: {sentence(result.theory.reason)}")
     if result.lost_rows or result.lost_frames:
         doubts.append(
-            f"{result.lost_rows} rows and {result.lost_frames} frames were lost; intervals with gaps are "
-            "not fitted."
+            f"{counted(result.lost_rows, 'row')} and {counted(result.lost_frames, 'frame')} were lost; "
+            "intervals with gaps are not fitted."
         )
     doubts.append(
         "A drive held by a tap of a given size is not held for every larger one: the basin of the held "

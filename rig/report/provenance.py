@@ -17,4 +17,6 @@ class Provenance:
     acknowledged_by: str = ""  # who read the cautions before power
     pace: str = ""  # "real" or "fast"
     firmware: str = ""
+    changed: str = ""  # since it was sealed, as the end of a sentence; "" if nothing is known to be
+    recovered: str = ""  # how its journal was found if that was not whole, after "was"
     software: Mapping[str, str] = field(default_factory=dict)  # distribution -> version

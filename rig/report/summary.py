@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from analysis.counting import counted
 from rig.report.rounding import NOT_KNOWN, bare, fixed, interval_text, measured_text, value_text
 from rig.report.wording import DIRECTION_SIGNS, KIND_WORDS, VERDICT_WORDS, opening, sentence, words
 from rig.results import Boundary, Finding, Measured, SessionResult
@@ -131,4 +132,4 @@ def headline(result: SessionResult) -> str:
     held = sum(level.state == "held" for level in result.levels)
     if not result.levels:
         return "No level was measured: there is no verdict."
-    return f"No boundary was located; the body was held at {held} of {len(result.levels)} levels."
+    return f"No boundary was located; the body was held at {held} of {counted(len(result.levels), 'level')}."
