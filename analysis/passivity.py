@@ -17,6 +17,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
+from analysis.counting import counted
+
 DETECTION = 3.3
 BLOCK_S = 0.05
 
@@ -81,14 +83,13 @@ def judge(writes: Sequence[int], gains: Sequence[Gain], locked: bool) -> Passivi
     if not locked or not writes:
         return PassivityVerdict("not_testable", "the drive was not locked during the analysed intervals")
     total = sum(writes)
+    intervals = counted(len(writes), "locked interval")
     if total:
-        reason = f"the drive register was written {total} times during {len(writes)} locked intervals"
+        reason = f"the drive register was written {counted(total, 'time')} during {intervals}"
         return PassivityVerdict("not_supported", reason)
     known = [gain for gain in gains if gain.std > 0.0 and math.isfinite(gain.std)]
     if not known:
-        reason = (
-            f"no write in {len(writes)} locked intervals, but the motor voltage was not measured over a swing"
-        )
+        reason = f"no write in {intervals}, but the motor voltage was not measured over a swing"
         return PassivityVerdict("not_testable", reason)
     weight = np.array([1.0 / gain.std**2 for gain in known])
     value = float(weight @ np.array([gain.value for gain in known]) / weight.sum())
@@ -101,7 +102,7 @@ def judge(writes: Sequence[int], gains: Sequence[Gain], locked: bool) -> Passivi
         reason = f"the motor voltage follows the body: {value:.2g} +- {1.96 * std:.2g} V/rad"
         return PassivityVerdict("not_supported", reason, *numbers)
     reason = (
-        f"no write to the drive in {len(writes)} locked intervals; the measured motor voltage does not follow the "
+        f"no write to the drive in {intervals}; the measured motor voltage does not follow the "
         f"body, a gain of {limit:.2g} V/rad or more would have been seen"
     )
     return PassivityVerdict("supported", reason, *numbers)

@@ -15,6 +15,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from analysis.counting import counted
+
 FEWEST_LEVELS = 4
 #: Levels closer to the boundary than this are left out.
 ABOVE_BOUNDARY = 1.15
@@ -69,7 +71,9 @@ def judge(
     limit = ABOVE_BOUNDARY * boundary_hz if boundary_hz else 0.0
     used = [point for point in points if point.flap_hz >= limit and math.isfinite(point.stiffness_std_per_s2)]
     if len(used) < FEWEST_LEVELS:
-        reason = f"{len(used)} held levels clear of the boundary, {FEWEST_LEVELS} are needed for a line"
+        reason = (
+            f"{counted(len(used), 'held level')} clear of the boundary, {FEWEST_LEVELS} are needed for a line"
+        )
         return VibrationVerdict("not_testable", reason, levels=len(used))
     square = np.array([point.flap_hz**2 for point in used])
     kappa = np.array([point.stiffness_per_s2 for point in used])

@@ -12,6 +12,7 @@ from analysis.boundary.flutter import flutter_crossing
 from analysis.boundary.fold import FEWEST_LEVELS, FoldFit, fit_fold
 from analysis.boundary.form import RigConstants
 from analysis.boundary.records import BoundaryEstimate, LevelPoint
+from analysis.counting import counted
 
 #: The fit reaches no further: a boundary this much below the lowest held level is not located.
 FARTHEST = 0.15
@@ -28,6 +29,8 @@ def falling_boundary(levels: Sequence[LevelPoint], constants: RigConstants) -> B
     line through the lowest levels): the boundary in volts moves with the winding's temperature.
     """
     held = [level for level in levels if level.began_held and level.taps]
+    if not levels:
+        return BoundaryEstimate("not_located", "no level was reached")
     if not any(level.began_held for level in levels):
         return BoundaryEstimate("not_located", "the body was held at no level")
     flutter = flutter_crossing(held)
@@ -111,7 +114,7 @@ def _lost_above(levels: Sequence[LevelPoint], fold: FoldFit) -> LevelPoint | Non
 
 def _bracket(levels: Sequence[LevelPoint], held: Sequence[LevelPoint]) -> BoundaryEstimate:
     """Too few levels for a fit: say what is known."""
-    words = f"{len(held)} held levels with usable taps, {FEWEST_LEVELS} are needed"
+    words = f"{counted(len(held), 'held level')} with usable taps, {FEWEST_LEVELS} are needed"
     falling = [level for level in levels if level.direction == "falling"]
     lost = [level.flap_hz for level in falling if not level.held]
     kept = [level.flap_hz for level in falling if level.held]

@@ -21,6 +21,8 @@ def rising_boundary(levels: Sequence[LevelPoint]) -> BoundaryEstimate:
     rising = sorted(
         (level for level in levels if level.direction == "rising"), key=lambda level: level.flap_hz
     )
+    if not rising:
+        return BoundaryEstimate("not_located", "no rising level was reached")
     if len(rising) < 2:
         return BoundaryEstimate("not_located", "fewer than two rising levels")
     missed = [k for k, level in enumerate(rising) if not level.held]

@@ -144,6 +144,8 @@ def _passivity(evidence: Evidence) -> Finding:
             gain = passivity_analysis.voltage_gain(evidence.store.time_s(rows), angle, volts)
             if gain is not None:
                 gains.append(gain)
+    if not writes and not any(visit.taps or visit.quiet is not None for visit in evidence.visits):
+        return Finding("not_testable", "no level was reached, there are no intervals to look at")
     verdict = passivity_analysis.judge(writes, gains, locked=bool(writes))
     limit = verdict.smallest_gain_seen_v_per_rad
     numbers = {"smallest_gain_seen": Measured(limit)} if math.isfinite(limit) else {}
@@ -179,10 +181,10 @@ def _remarks(evidence: Evidence, falling: BoundaryEstimate, points: list[LevelPo
         basin = Basin(falling.form, sigma, rig.stops.low_rad, rig.stops.high_rad)
         remarks.extend(_basin_remarks(evidence, basin))
     verdicts = sum(level.regime != "undetermined" for level in evidence.levels)
-    if verdicts:
-        expected = 0.01 * verdicts
+    expected = f"{0.01 * verdicts:.1f}"
+    if expected != "0.0":  # of fewer than six there is nothing to expect
         remarks.append(
-            f"{verdicts} levels were given a definite regime at 99 %: {expected:.1f} of them may be expected wrong."
+            f"{verdicts} levels were given a definite regime at 99 %: {expected} of them may be expected wrong."
         )
     for trip in evidence.timeline.trips:
         remarks.append(f"The run was halted: {trip.data.get('sentence', trip.data.get('cause', ''))}")
