@@ -41,7 +41,7 @@ class BenchClient:
 
     @property
     def ended(self) -> bool:
-        """Whether the bench process has closed its pipe, by ending or dying."""
+        """Whether the bench process has closed its pipe, by ending or dying, and all it told was taken."""
         return self._reader.ended
 
     def here(self) -> None:

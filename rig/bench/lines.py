@@ -17,20 +17,26 @@ MOST_WAITING = 20_000
 
 
 class LineReader:
-    """Lines from a descriptor as they come; `ended` once the other side has closed or died."""
+    """Lines from a descriptor as they come."""
 
     def __init__(
         self, descriptor: int, heard: Callable[[], None] | None = None, passed_on: bytes = b""
     ) -> None:
         """`heard` is called for every piece that comes. Lines that begin with `passed_on` are not read but given as
         they are, {"line": bytes}: for whoever only hands them on."""
-        self.ended = False
+        self._closed = False
         self._passed_on = passed_on
         self._descriptor = descriptor
         self._heard = heard or (lambda: None)
         self._lines: queue.SimpleQueue[Fields] = queue.SimpleQueue()
         self._thread = threading.Thread(target=self._run, name="line reader", daemon=True)
         self._thread.start()
+
+    @property
+    def ended(self) -> bool:
+        """Whether the other side has closed or died, and all it had written was taken."""
+        # In this order: what came last is in the queue before the end is known.
+        return self._closed and self._lines.empty()
 
     def take(self) -> list[Fields]:
         """What has come since the last call."""
@@ -59,7 +65,7 @@ class LineReader:
             except OSError:
                 data = b""
             if not data:
-                self.ended = True
+                self._closed = True
                 return
             self._heard()
             *whole, rest = (rest + data).split(b"\n")

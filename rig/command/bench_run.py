@@ -1,4 +1,8 @@
-"""A run in a bench process, as the command line shows it."""
+"""A run in a bench process, as the command line shows it.
+
+A command that was held up (a stopped terminal, a suspended computer) finds the pipe closed when it goes on. That alone
+is no death: what the bench process wrote is read first, and what did not fit into the pipe stands in the session.
+"""
 
 from __future__ import annotations
 
@@ -24,6 +28,7 @@ def run_on_bench(job: Job, progress: RunProgress) -> tuple[RunOutcome, SessionRe
         raise CommandError(f"{job.session} is there already; choose another name with --out")
     if not job.session.parent.is_dir():
         raise CommandError(f"{job.session.parent} is not a folder")
+    progress.say(f"preparing the run on {job.port or job.rig_name} ...")  # some seconds, more the first time
     with HaltSignals() as signals, BenchClient(job) as client:
         done = _follow(client, job, progress, signals)
     path = Path(str(done["session"]))
@@ -45,7 +50,7 @@ def _follow(client: BenchClient, job: Job, progress: RunProgress, signals: HaltS
         line = client.wait(SIGN_OF_LIFE_S)
         if line is None:
             if client.ended:
-                raise _died(client, job)
+                return _without_a_word(client, job)
             continue
         verdicts: list[Verdict] = []
         if "failed" in line:
@@ -64,16 +69,33 @@ def _follow(client: BenchClient, job: Job, progress: RunProgress, signals: HaltS
             progress(time_s, last, verdicts)
 
 
-def _died(client: BenchClient, job: Job) -> CommandError:
-    """The bench process is gone: its board has cut the drive by itself; what it wrote is sealed now."""
-    client.process.wait()
-    words = "the bench process has died; the board cuts the drive by itself when the heartbeat stops"
-    if not job.journal.exists():
-        return CommandError(words, Exit.HARDWARE)
-    from rig.record.sealing import seal
+def _without_a_word(client: BenchClient, job: Job) -> dict[str, Any]:
+    """What is done with a bench process that has gone and told no end; CommandError if it has died.
 
-    try:
-        seal(job.journal, job.session, keep_journal=True)
-    except RecordError as error:
-        return CommandError(f"{words}; {error}; the journal {job.journal} is kept", Exit.HARDWARE)
-    return CommandError(f"{words}; its rows are sealed in {job.session}, the journal is kept", Exit.HARDWARE)
+    Its rows are sealed, if it has not done so itself.
+    """
+    died = client.process.wait() < 0  # by a signal
+    words = "the bench process has died; the board cuts the drive by itself when the heartbeat stops"
+    if not job.session.exists():
+        if not job.journal.exists():
+            raise CommandError(words, Exit.HARDWARE)
+        from rig.record.sealing import seal
+
+        try:
+            seal(job.journal, job.session, keep_journal=True)
+        except RecordError as error:
+            raise CommandError(
+                f"{words}; {error}; the journal {job.journal} is kept", Exit.HARDWARE
+            ) from None
+        words = f"{words}; its rows are sealed in {job.session}, the journal is kept"
+    finished = None if died else _finished(job.session)
+    if finished is None:
+        raise CommandError(words, Exit.HARDWARE)
+    return {**finished, "session": str(job.session)}
+
+
+def _finished(path: Path) -> dict[str, Any] | None:
+    """How the run of a session ended, by its own last words; None if it was cut off."""
+    with opened(path) as session:
+        ends = [event.data for event in session.events if event.kind == "finished"]
+    return ends[-1] if ends else None

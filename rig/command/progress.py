@@ -61,5 +61,10 @@ class RunProgress:
         """Headless: nobody answers; prompts run into their own limit."""
         return ()
 
+    def say(self, text: str) -> None:
+        """Something to know, that asks for nothing."""
+        self._console.print(text, markup=False, soft_wrap=True)
+
     def prompt(self, text: str) -> None:
-        self._console.print(f"  >>> {text}")
+        # Whatever stands in it, and a line of its own however long it is.
+        self._console.print(f"  >>> {text}", markup=False, soft_wrap=True)
