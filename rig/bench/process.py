@@ -18,6 +18,7 @@ from typing import Any
 from drivers.clock import Clock, HostClock
 from drivers.contract import Bench, Hello
 from drivers.errors import BenchError
+from drivers.ports import malformed
 from drivers.rows import RowBlock
 from rig.bench.books import JournalledAnalysis, ToldJournal
 from rig.bench.control import Control
@@ -32,11 +33,12 @@ from rig.events import Event
 from rig.problem import FileProblems
 from rig.record.errors import RecordError
 from rig.record.journal import JournalWriter
-from rig.run.agreement import agreed
+from rig.run.agreement import agreed, named_otherwise
 from rig.run.header import run_header
 from rig.run.inputs import OperatorInput
 from rig.run.loop import Loop, RunOutcome
 from rig.run.progress import Standing
+from rig.run.runner import READY, RUNNING
 from rig.steps import Protocol
 from rig.verdicts import Verdict
 
@@ -92,6 +94,8 @@ class Run:
             self.protocol: Protocol = job.protocol(self.rig)
         except FileProblems as error:
             raise Failed(USAGE, "; ".join(str(problem) for problem in error.problems)) from None
+        if self.rig.driver == "board" and (wrong := malformed(self.rig.port)):
+            raise Failed(USAGE, wrong)
         if job.session.exists():
             raise Failed(USAGE, f"{job.session} is there already; choose another name with --out")
         self.analysis = RemoteAnalysis(clock)
@@ -101,7 +105,9 @@ class Run:
             self.analysis.wait_until_warm()
             hello = self.bench.open()
             stack.callback(self.bench.close)
-            self.hello: Hello = agreed(self.rig, hello) if self.rig.driver == "board" else hello
+            on_board = self.rig.driver == "board"
+            self.hello: Hello = agreed(self.rig, hello) if on_board else hello
+            self._stranger = named_otherwise(self.rig, hello) if on_board else ""
             # Whoever starts a run arms the board anew; it refuses while the cause of a latch is still there.
             self.bench.clear_latch()
             self.samplers = Samplers(self.rig.samplers, clock, self.hello.tick_hz)
@@ -204,9 +210,21 @@ class Run:
                 turns=self._turns,
             )
         tick = self._tick = int(block.tick[-1])
-        for words in self.samplers.write(self.journal, tick):
-            self._told.event(Event(tick, "notice", {"notice": "sampler", "text": words}))
-            self._control.prompt(words)
+        if self._stranger:
+            self._notice(tick, "other_board", self._stranger)
+            self._stranger = ""
+        for words in self.samplers.write(self.journal, tick, self._running):
+            self._notice(tick, "sampler", words)
+
+    @property
+    def _running(self) -> bool:
+        """Whether neither a limit nor anybody has ended the run."""
+        loop = self.loop
+        return loop is not None and not loop.interlocks.tripped and loop.runner.state in (READY, RUNNING)
+
+    def _notice(self, tick: int, what: str, words: str) -> None:
+        self._told.event(Event(tick, "notice", {"notice": what, "text": words}))
+        self._control.prompt(words)
 
     def _report(self, time_s: float, standing: Standing, verdicts: Sequence[Verdict]) -> None:
         if time_s < self._next_report_s or self.loop is None:

@@ -29,7 +29,8 @@ class SamplerThread:
         self._came: queue.SimpleQueue[tuple[float, TextReading]] = queue.SimpleQueue()
         self._ending = threading.Event()
         self.failure = ""
-        self._source = TextSource(sampler, open_wire(sampler.port, sampler.baud))
+        wire = open_wire(sampler.port, sampler.baud, end="the sampler", device="its device")
+        self._source = TextSource(sampler, wire)
         self._thread = threading.Thread(target=self._run, name=f"sampler {sampler.name}", daemon=True)
         self._thread.start()
 
@@ -70,8 +71,11 @@ class Samplers:
             self.close()
             raise
 
-    def write(self, journal: JournalWriter, tick: int) -> list[str]:
-        """Write down what has come; `tick` is the newest row's. Sentences of samplers that have failed since."""
+    def write(self, journal: JournalWriter, tick: int, running: bool) -> list[str]:
+        """Write down what has come; `tick` is the newest row's. Sentences of samplers that have failed since.
+
+        `running`: nothing has ended the run yet, so that it can be said to go on.
+        """
         now_s = self._clock.now_s()
         for thread in self._threads:
             for arrival_s, reading in thread.take():
@@ -79,10 +83,8 @@ class Samplers:
                 journal.samples(Samples.of(thread.sampler.name, arrival_tick, reading))
         failed = [one for one in self._threads if one.failure and one.sampler.name not in self._told]
         self._told.update(one.sampler.name for one in failed)
-        return [
-            f"sampler {one.sampler.name} has failed: {one.failure}; the run goes on without it"
-            for one in failed
-        ]
+        end = "; the run goes on without it" if running else ""
+        return [f"sampler {one.sampler.name} has failed: {one.failure}{end}" for one in failed]
 
     def close(self) -> None:
         for thread in self._threads:

@@ -9,7 +9,7 @@ from pathlib import Path
 from drivers.clock import VirtualClock
 from rig.command.exits import CommandError, Exit
 from rig.command.progress import RunProgress
-from rig.command.run import show_cautions
+from rig.command.run import show_cautions, told_once
 from rig.command.sessions import journal_beside, opened, report_session, run_session, with_seed
 from rig.command.table import summary
 from rig.files.forecast import forecast
@@ -39,7 +39,7 @@ def main(words: argparse.Namespace) -> Exit:
     with opened(session) as file:
         report_session(file, rig, result, report)
         bench_s = float(file.streams["board"].time_s[-1])
-    print(summary(result))
+    print(summary(told_once(result, outcome)))
     print(f"\n{bench_s:.0f} s of bench time in {session}, the report in {report}")
     if outcome.exit_code:
         raise CommandError(outcome.reason, Exit(outcome.exit_code))

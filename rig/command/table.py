@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 from rig.results import Boundary, LevelResult, Measured, SessionResult
 
@@ -71,6 +71,17 @@ def boundary_line(name: str, boundary: Boundary) -> str:
     if drive.value is not None:
         line += f", {number(drive, 3)} V [{interval(drive, 3)}]"
     return line
+
+
+def sampler_losses(samplers: Mapping[str, int]) -> list[str]:
+    """A sentence for each sampler of text lines that lost some: its name and how many were damaged."""
+    return [
+        f"{count} damaged lines of sampler {name} were left out"
+        if count > 1
+        else f"1 damaged line of sampler {name} was left out"
+        for name, count in samplers.items()
+        if count
+    ]
 
 
 def summary(result: SessionResult) -> str:

@@ -14,6 +14,9 @@ from rig.description import RigDescription
 #: A converter's scale differs from its nominal value by calibration, never by this much.
 SCALE_FACTOR = 1.5
 
+#: What a stand-in's board puts behind the name of the rig it stands in for.
+STAND_IN = "(stand-in)"
+
 #: A watchdog of 200 ms is what is asked for; one far slower is none.
 LONGEST_WATCHDOG_S = 0.5
 
@@ -50,6 +53,21 @@ def agreed(rig: RigDescription, hello: Hello) -> Hello:
         for channel in hello.channels
     )
     return replace(hello, channels=ChannelTable(channels))
+
+
+def named_otherwise(rig: RigDescription, hello: Hello) -> str:
+    """A sentence if a board calls itself by another name than the rig file; "" if not, also for its stand-in.
+
+    Channel tables of different rigs may be alike, so that nothing but the name tells them apart. Nobody has to name a
+    board like its rig: that is a notice and no refusal.
+    """
+    if _bare(hello.name) == _bare(rig.name):
+        return ""
+    return f"the board calls itself {hello.name!r}, the rig file is for {rig.name!r}"
+
+
+def _bare(name: str) -> str:
+    return name.strip().casefold().removesuffix(STAND_IN).rstrip()
 
 
 def _agreed(board: Channel, rig: Channel, board_name: str) -> Channel:

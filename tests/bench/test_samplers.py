@@ -8,12 +8,16 @@ import time
 import tty
 from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
-from trials import PATIENT, SPIN, Listener, StandIn, job_for, patient_rig, stand_in
+from trials import PATIENT, SPIN, Listener, StandIn, job_for, patient_rig, stand_in, until
 
+from drivers.clock import HostClock
+from drivers.text_lines import TextColumn, TextSampler
 from rig.bench.client import BenchClient
+from rig.bench.samplers import Samplers
 from rig.command.sessions import software
 from rig.session import open_session
 from rig.verification.verify import verify
@@ -78,7 +82,11 @@ def test_text_lines_beside_the_board(served: StandIn, tmp_path: Path) -> None:
         printer.stop()  # unplugged in mid-run
         done = heard.wait(lambda: heard.last("done"), what="the end")
     assert done["exit_code"] == 0, done
-    assert any("sampler strain has failed" in str(line.get("prompt")) for line in heard.lines)
+    told = [str(line["prompt"]) for line in heard.lines if "strain" in str(line.get("prompt"))]
+    assert told == [
+        f"sampler strain has failed: the line to the sampler is down ({printer.port}): unplugged, or its device "
+        "has gone; the run goes on without it"
+    ]
     with open_session(tmp_path / "run.h5") as session:
         rows = session.samplers["strain"]
         force, time_s = rows["force"], rows.time_s
@@ -89,6 +97,27 @@ def test_text_lines_beside_the_board(served: StandIn, tmp_path: Path) -> None:
         assert "strain" in [one["name"] for one in session.header["samplers"]]
     checks = verify(tmp_path / "run.h5", software(), lambda session: session.rig)
     assert [check.name for check in checks if check.outcome == "wrong"] == [], checks
+
+
+class NoJournal:
+    def samples(self, samples: object) -> None:
+        pass
+
+
+@pytest.mark.parametrize("running", [True, False])
+def test_a_failed_sampler_is_told_once_and_in_the_state_the_run_is_in(running: bool) -> None:
+    printer = Printer()
+    column = TextColumn("force", "vertical load", "N", 1e-3)
+    described = TextSampler("strain", printer.port, (column,), tick_column=0, tick_hz=1000.0)
+    samplers = Samplers([described], HostClock(), 1_000_000)
+    journal: Any = NoJournal()
+    assert samplers.write(journal, 0, running) == []
+    printer.stop()
+    (told,) = until(lambda: samplers.write(journal, 0, running), what="the failure")
+    assert told.startswith("sampler strain has failed: the line to the sampler is down")
+    assert told.endswith("the run goes on without it") == running
+    assert samplers.write(journal, 0, running) == []
+    samplers.close()
 
 
 def test_a_sampler_that_is_not_there_is_told_before_power(served: StandIn, tmp_path: Path) -> None:
