@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import socket
 from contextlib import suppress
@@ -117,9 +118,10 @@ class TcpPlace:
             listener.bind((self._host, self._port))
         except OSError as error:
             listener.close()
-            raise LinkError(
-                f"TCP port {self._port} of {self._host} cannot be used: {error.strerror or error}"
-            ) from None
+            why = (error.strerror or str(error)).lower()
+            if error.errno == errno.EADDRINUSE:
+                why = "another program has it"
+            raise LinkError(f"TCP port {self._port} of {self._host} cannot be used: {why}") from None
         listener.listen(1)
         listener.setblocking(False)
         self._listener = listener

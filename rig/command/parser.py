@@ -33,6 +33,13 @@ class Parser(argparse.ArgumentParser):
         raise CommandError(f"{message} (try '{self.prog} --help')")
 
 
+def _tcp_port(text: str) -> int:
+    """A TCP port to serve on."""
+    if not (text.isascii() and text.isdecimal() and len(text) <= 5 and int(text) <= 65_535):
+        raise argparse.ArgumentTypeError(f"{text}: expected a whole number from 0 to 65535")
+    return int(text)
+
+
 def build() -> argparse.ArgumentParser:
     """The parser for all commands; its result has `.command` and the command's own words."""
     parser = Parser(
@@ -101,7 +108,7 @@ def build() -> argparse.ArgumentParser:
     )
     where = stand_in.add_mutually_exclusive_group()
     where.add_argument(
-        "--tcp", metavar="PORT", type=int, help="serve on this TCP port of this machine (0: any free)"
+        "--tcp", metavar="PORT", type=_tcp_port, help="serve on this TCP port of this machine (0: any free)"
     )
     where.add_argument("--link", metavar="PATH", help="name for the pseudo-terminal that stays the same")
     stand_in.add_argument("--seed", type=int, help="seed of the simulated disturbances")

@@ -34,6 +34,8 @@ def main(words: argparse.Namespace) -> Exit:
     if not 0.05 <= words.watchdog <= 10.0:
         raise CommandError(f"--watchdog {words.watchdog:g}: expected seconds from 0.05 to 10")
     mishaps = _mishaps(words.fault)
+    # Kernels are compiled when a machine simulates for the first time: that takes seconds, and nobody can connect yet.
+    print(f"preparing the simulated {rig.name} ...", file=sys.stderr, flush=True)
     clock = HostClock()
     pace = SlippingClock(clock)
     with ExitStack() as stack:

@@ -6,6 +6,7 @@ import json
 import os
 import re
 import signal
+import socket
 import subprocess
 import sys
 import time
@@ -223,6 +224,15 @@ def test_ctrl_c_halts_and_keeps_the_session(tmp_path: Path) -> None:
         (("run", "quick", "--rig", "quick"), "a rig file; this is a protocol"),
         (("run", "quick", "--rig", "boom", "--seed", "x"), "--seed"),
         (("run", "quick", "--rig", "boom", "--out", "/nowhere/x.h5"), "is not a folder"),
+        (
+            ("run", "quick", "--rig", "boom", "--port", "foo://x", "--acknowledge", "a test"),
+            "foo://x cannot be",
+        ),
+        (("run", "quick", "--rig", "boom", "--port", "socket://a:b", "--acknowledge", "a test"), "HOST:PORT"),
+        (("run", "quick", "--rig", "boom", "--port", "", "--acknowledge", "a test"), "--port has no words"),
+        (("stand-in", "boom", "--tcp", "99999"), "99999: expected a whole number from 0 to 65535"),
+        (("stand-in", "boom", "--tcp", "-1"), "-1: expected a whole number"),
+        (("stand-in", "boom", "--tcp", "http"), "http: expected a whole number"),
         (("check", "/"), "a folder"),
         (("analyse", "nothing.h5"), "there is none of that name"),
         (("recover", "nothing.journal"), "there is no file of that name"),
@@ -231,8 +241,32 @@ def test_ctrl_c_halts_and_keeps_the_session(tmp_path: Path) -> None:
 def test_bad_usage_is_one_sentence(words: tuple[str, ...], sentence: str, tmp_path: Path) -> None:
     done = haltere(*words, cwd=tmp_path)
     assert done.returncode == 2
-    assert sentence in done.stderr
+    assert sentence in done.stderr and done.stderr.count("haltere: ") == 1
     assert list(tmp_path.iterdir()) == []
+
+
+def test_a_port_that_another_stand_in_has_is_one_sentence(tmp_path: Path) -> None:
+    with socket.socket() as taken:
+        taken.bind(("127.0.0.1", 0))
+        taken.listen(1)
+        port = str(taken.getsockname()[1])
+        done = haltere("stand-in", "boom", "--tcp", port, cwd=tmp_path)
+    assert done.returncode == 4 and done.stdout == ""
+    # It says at once that it is busy: compiling takes seconds on a machine that simulates for the first time.
+    first, last = done.stderr.splitlines()
+    assert first == "preparing the simulated boom ..."
+    assert last == f"haltere: TCP port {port} of 127.0.0.1 cannot be used: another program has it"
+
+
+def test_why_a_run_was_halted_is_told_once(tmp_path: Path) -> None:
+    rig = tmp_path / "slow.toml"
+    text = find("boom").read_text(encoding="utf-8")
+    rig.write_text(re.sub(r'(?m)^flap_rate = ".*?"', 'flap_rate = "12 Hz"', text), encoding="utf-8")
+    done = haltere("run", "quick", "--rig", str(rig), "--out", str(tmp_path / "run.h5"), "--quiet")
+    assert done.returncode == 3, done.stderr
+    assert (done.stdout + done.stderr).count("exceeded 12.00 Hz") == 1
+    assert done.stderr.startswith("haltere: At ") and "flap rate" in done.stderr
+    assert "The run was halted: At " in haltere("analyse", str(tmp_path / "run.h5")).stdout
 
 
 def test_damaged_files_are_told_as_damaged(tmp_path: Path) -> None:
