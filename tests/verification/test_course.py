@@ -8,7 +8,7 @@ import pytest
 
 from rig import events
 from rig.events import READ, Event, unreadable
-from rig.verification.course import bracket_problems, event_problems, loss_event_problems
+from rig.verification.course import bracket_problems, event_problems, loss_event_problems, open_at_end
 
 HZ = 1000
 
@@ -72,6 +72,41 @@ def test_what_none_could_write(text: str, problems: list[str]) -> None:
     assert len(found) == len(problems)
     for told, words in zip(found, problems, strict=True):
         assert words in told
+
+
+@pytest.mark.parametrize(
+    ("text", "still_open"),
+    [
+        ("level0 tap0", ["'tap 0' at tick 2000", "'level 0' at tick 1000"]),
+        ("level0 tap0 tap_end0", ["'level 0' at tick 1000"]),
+        ("level0 tap0 halt", []),
+        ("level0 tap0 unread", []),
+    ],
+)
+def test_what_is_open_at_the_end(text: str, still_open: list[str]) -> None:
+    found = open_at_end(made(text))
+    assert found == [f"the event {one}" for one in still_open]
+
+
+@pytest.mark.parametrize(
+    ("text", "problems"),
+    [
+        ("level0 tap0 unread tap_end0 level_end0 halt!", 0),
+        ("level0 unread settled1 tap3 tap_end3 level_end1 level2 level_end2 halt!", 0),
+        ("level0 unread tap_end0 tap_end1 level_end0", 1),  # one interval may end that began in it, not two
+        ("level0 unread level_end0 level_end1", 1),
+        ("unread level0 settled0 level_end0 settled0", 1),
+    ],
+)
+def test_behind_what_could_not_be_read(text: str, problems: int) -> None:
+    assert len(bracket_problems(made(text))) == problems
+
+
+def test_losses_around_what_could_not_be_read() -> None:
+    told = [Event(10, "loss", {"rows": 4, "frames": 1, "overruns": 0})]
+    assert len(loss_event_problems(told, [(50, 3, 1, 0)], 1000)) == 2
+    assert loss_event_problems(told, [(50, 3, 1, 0)], 1000, [(5, 50)]) == []
+    assert len(loss_event_problems(told, [(50, 3, 1, 0)], 1000, [(20, None)])) == 1
 
 
 def test_time_and_order() -> None:
