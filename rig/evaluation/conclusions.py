@@ -182,7 +182,7 @@ def _remarks(evidence: Evidence, falling: BoundaryEstimate, points: list[LevelPo
         remarks.extend(_basin_remarks(evidence, basin))
     verdicts = sum(level.regime != "undetermined" for level in evidence.levels)
     expected = f"{0.01 * verdicts:.1f}"
-    if expected != "0.0":  # of fewer than six there is nothing to expect
+    if expected != "0.0":  # of fewer than five there is nothing to expect
         remarks.append(
             f"{verdicts} levels were given a definite regime at 99 %: {expected} of them may be expected wrong."
         )

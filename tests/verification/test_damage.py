@@ -14,7 +14,7 @@ from sessions_to_damage import short
 
 from rig.command.sessions import session_rig, software
 from rig.record.amendment import write_results
-from rig.verification.check import Check
+from rig.verification.check import Check, found, skipped
 from rig.verification.verify import NAMES, sound, verify
 
 BOARD = "streams/board"
@@ -273,3 +273,18 @@ def test_a_flipped_bit_inside_a_column_does_not_hide_the_rest(copy: Path) -> Non
     assert "/streams/board/tick cannot be read" in sentence(found, "digests")
     assert "/streams/board/tick cannot be read" in sentence(found, "clock")
     assert [check.outcome for check in found if check.name in ("rows", "results")] == ["not checked"] * 2
+
+
+@pytest.mark.parametrize("gone", ["digests", "overview"])
+def test_without_what_every_session_has_it_is_not_sound(copy: Path, gone: str) -> None:
+    with h5py.File(copy, "r+") as file:
+        del file[gone]
+    found = verify(copy, OTHER, session_rig)
+    assert gone in wrong(found) and not sound(found)
+    assert "the session has none, and every session" in sentence(found, gone)
+
+
+def test_a_check_left_undone_is_not_sound_unless_there_is_no_occasion_for_it() -> None:
+    done = found("structure", [], "good")
+    assert sound([done, skipped("results", "worked out by another version", due=False)])
+    assert not sound([done, skipped("rows", "the ticks cannot be read")])
