@@ -14,6 +14,7 @@ from rig.record.durability import sync_folder
 from rig.record.errors import Damaged, JournalFailure
 from rig.record.inspection import inspect
 from rig.record.refusals import refusal
+from rig.record.target import new_session
 
 TEXT = h5py.string_dtype("utf-8")
 FINAL = "/results/final"
@@ -34,7 +35,7 @@ def write_results(session: Path, results: dict[str, Any], software: str = "") ->
         with _opened(session) as old:
             inspect(old, session)
             # A new file, not a copy changed in place: what HDF5 frees in a file it leaves there half overwritten.
-            with h5py.File(aside, "w", libver=("v110", "v110")) as new:
+            with new_session(aside) as new:
                 _copy(old, new)
                 final = new.create_dataset(FINAL, data=text, dtype=TEXT)
                 if software:

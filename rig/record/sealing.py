@@ -44,6 +44,7 @@ from rig.record.durability import lock, sync_folder
 from rig.record.errors import JournalFailure, NameTaken
 from rig.record.recording import Recording, read_recording
 from rig.record.refusals import refusal
+from rig.record.target import new_session
 
 FORMAT = 1
 #: What of a channel stands beside its column.
@@ -77,7 +78,7 @@ def write_session(recording: Recording, session: Path) -> None:
     # One name for all attempts: what a killed one leaves behind is overwritten by the next.
     aside = session.with_name(f".{session.name}.part")
     try:
-        with h5py.File(aside, "w", libver=("v110", "v110")) as file:
+        with new_session(aside) as file:
             wanted = _fill(file, recording)
         descriptor = os.open(aside, os.O_RDONLY)
         try:
