@@ -32,7 +32,10 @@ def main(words: argparse.Namespace) -> Exit:
     print(
         f"{out}: {rows} rows and {len(recording.events)} events from {journal} ({how}); the journal is kept"
     )
-    # A cut at the end is what a crash leaves; anything else means that bytes changed on the disk.
+    # An end between two records is what a killed run leaves. A record in part is known to be lost; anything else
+    # means that bytes changed on the disk.
+    if recovery is not None and recovery.torn:
+        raise CommandError(f"{journal}: {recording.damage}; all before it is sealed", Exit.DAMAGED)
     if recovery is not None and recovery.damaged:
         raise CommandError(
             f"{journal}: {recording.damage}; what could be read before and behind it is sealed", Exit.DAMAGED

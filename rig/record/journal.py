@@ -177,7 +177,7 @@ class Gap:
     """Bytes of a journal that are no records: `start` up to `end`, and what shows it.
 
     `records` are missing in it by the numbers of those around it, None where no record stands behind it.
-    `harmless` is an end as a crash leaves it.
+    `harmless` is an end as a crash leaves it, `torn` one of these in which part of a record stands.
     """
 
     start: int
@@ -185,6 +185,7 @@ class Gap:
     what: str
     records: int | None = None
     harmless: bool = False
+    torn: bool = False
 
 
 class Journal:
@@ -283,5 +284,7 @@ class Journal:
         elif stream.damage:
             self.gaps.append(Gap(start, size, stream.damage))
         else:
-            self.gaps.append(Gap(start, size, f"cut off in a record at byte {start}", harmless=True))
+            self.gaps.append(
+                Gap(start, size, f"cut off in a record at byte {start}", harmless=True, torn=True)
+            )
         return None

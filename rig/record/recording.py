@@ -135,7 +135,9 @@ class _Reading:
             else:
                 self._into.ended = book.ended
                 for gap in book.gaps[known:]:
-                    unread = Unread(gap.what, gap.start, gap.end, gap.harmless, from_tick=self._block_tick)
+                    unread = Unread(
+                        gap.what, gap.start, gap.end, gap.harmless, torn=gap.torn, from_tick=self._block_tick
+                    )
                     self._into.unread.append(unread)
         self._into.pieces = self._merger.finish()
 

@@ -2,7 +2,7 @@
 
 `/recovered` is JSON: {"ended": whether the end record was there, "rows_behind": rows taken in behind a damage,
 "results_left_out": verdicts and results told behind one, "unread": [{"what", "start_byte", "end_byte",
-"harmless", "records", "rows", "frames", "from_tick", "to_tick"}, ...]}. Sessions of a whole journal have none.
+"harmless", "torn", "records", "rows", "frames", "from_tick", "to_tick"}, ...]}. Sessions of a whole journal have none.
 """
 
 from __future__ import annotations
@@ -18,15 +18,16 @@ PLACE = "/recovered"
 class Unread:
     """A stretch of a journal that could not be read.
 
-    `harmless` is what a crash leaves at the end. `records` are those missing by their numbers, None at the end of
-    the file. `rows` and `frames` are lost in it, between the ticks `from_tick` and `to_tick`: those of the blocks
-    before and behind it, None where there is none.
+    `harmless` is what a crash leaves at the end, `torn` if part of a record stands there. `records` are those
+    missing by their numbers, None at the end of the file. `rows` and `frames` are lost in it, between the ticks
+    `from_tick` and `to_tick`: those of the blocks before and behind it, None where there is none.
     """
 
     what: str
     start_byte: int
     end_byte: int
     harmless: bool = False
+    torn: bool = False
     records: int | None = None
     rows: int = 0
     frames: int = 0
@@ -61,6 +62,11 @@ class Recovery:
     @property
     def damaged(self) -> bool:
         return not self.harmless
+
+    @property
+    def torn(self) -> bool:
+        """Whether the last record was written in part: what it held is lost."""
+        return any(stretch.torn for stretch in self.unread)
 
     @property
     def with_gap(self) -> bool:

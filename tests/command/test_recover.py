@@ -112,7 +112,8 @@ def test_cut_off_in_a_tap(journal: Path, capsys: pytest.CaptureFixture[str]) -> 
     tap = events(journal, "tap")[2]
     frames = [one for one in jn.Journal(journal) if one.kind == jn.FRAME and one.start > tap.end]
     journal.write_bytes(journal.read_bytes()[: frames[20].start + 5])
-    assert run(capsys, "recover", journal)[0] == 0
+    code, _, err = run(capsys, "recover", journal)
+    assert code == 5 and "cut off in a record at byte" in err and "all before it is sealed" in err
     code, out, _ = run(capsys, "verify", journal.with_suffix(".h5"))
     assert code == 0, out
     told = line(out, "events")
