@@ -11,10 +11,12 @@ from rig.command.exits import CommandError, Exit
 from rig.command.parser import build
 from rig.problem import FileProblems
 from rig.record.errors import Damaged
+from rig.single_thread import keep_single
 
 
 def main(words: Sequence[str] | None = None) -> int:
     """Run one command; returns its exit code. Every error is told in sentences on stderr."""
+    keep_single(os.environ)
     try:
         parsed = build().parse_args(words)
         module = import_module(f"rig.command.{parsed.command.replace('-', '_')}")

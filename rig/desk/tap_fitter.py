@@ -6,7 +6,7 @@ import json
 import sys
 from pathlib import Path
 
-from PySide6.QtCore import QObject, QProcess, QProcessEnvironment, Signal
+from PySide6.QtCore import QObject, QProcess, Signal
 
 
 class TapFitter(QObject):
@@ -31,11 +31,6 @@ class TapFitter(QObject):
         if self._process is not None:
             return
         process = QProcess(self)
-        surroundings = QProcessEnvironment.systemEnvironment()
-        # Threads of the linear algebra make such fits no faster and take the other cores from the window.
-        for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
-            surroundings.insert(name, "1")
-        process.setProcessEnvironment(surroundings)
         process.setStandardErrorFile(QProcess.nullDevice())
         process.readyReadStandardOutput.connect(self._hear)
         process.finished.connect(self._gone)
